@@ -1,0 +1,3 @@
+"""seqmix: what comes next in a log, with honest odds."""
+
+__version__ = "0.1.0"

@@ -1,0 +1,44 @@
+"""`seqmix models`: the library of models."""
+
+from __future__ import annotations
+
+import click
+
+from seqmix.cli.options import Answer, Helpful, writes_answer
+from seqmix.cli.writer import bits
+
+COLUMNS = ("name", "kinds", "prior_cost_bits", "summary", "source")
+
+
+@click.command("models", cls=Helpful, example="seqmix models")
+@writes_answer
+def command(answer: Answer) -> None:
+    """List the models: kinds of log, prior cost, summary and paper.
+
+    A prior cost is the number of bits needed to say which model is meant; the first weight of a model is 2 to
+    the minus that. Use the names with --models.
+    """
+    from seqmix.models.registry import entries
+
+    with answer.open() as writer:
+        if writer.format == "jsonl":
+            for entry in entries():
+                writer.record({
+                    "name": entry.name, "kinds": list(entry.kinds), "prior_cost_bits": entry.prior_cost_bits,
+                    "summary": entry.summary, "source": entry.source,
+                })  # fmt: skip
+            return
+        rows = [
+            (entry.name, " ".join(entry.kinds), entry.prior_cost_bits, entry.summary, entry.source)
+            for entry in entries()
+        ]
+        if writer.format == "csv":
+            writer.row(COLUMNS)
+            for row in rows:
+                writer.row(row)
+        else:
+            writer.table(
+                [("model", "<"), ("kinds", "<"), ("prior cost", ">"), ("what it does", "<")],
+                [(name, kinds, bits(cost), summary) for name, kinds, cost, summary, _ in rows],
+            )
+            writer.lines(f"{name}: {source}" for name, _, _, _, source in rows)

@@ -1,0 +1,71 @@
+"""The entry point: runs one command and ends with its exit code and, if it failed, one line on stderr.
+
+Exit codes: 0; 1 data or state; 2 usage; 74 output; 130 and 143 on SIGINT and SIGTERM; 141 when the reader of
+our pipe went away. SEQMIX_DEBUG=1 adds the traceback of an error nobody expected.
+"""
+
+from __future__ import annotations
+
+import os
+import signal
+import sys
+from types import FrameType
+
+from seqmix.cli.notes import discard, say
+from seqmix.errors import SeqmixError
+
+
+class Stopped(KeyboardInterrupt):
+    """A signal asked us to end. Raised wherever the program is, so that files half-written are removed."""
+
+    def __init__(self, number: int) -> None:
+        super().__init__(number)
+        self.number = number
+
+
+def main() -> int:
+    """Run `seqmix` on the arguments of the process; returns the exit code."""
+    for number in (signal.SIGINT, signal.SIGTERM):
+        if signal.getsignal(number) is not signal.SIG_IGN:  # nohup and `&` in a script stay in force
+            signal.signal(number, _stop)
+    try:
+        # Imported here, so that a signal during the import is met as well.
+        from seqmix.cli.group import run
+
+        return run(sys.argv[1:])
+    except BaseException as error:
+        return _end(error)
+
+
+def _stop(number: int, frame: FrameType | None) -> None:
+    signal.signal(number, signal.SIG_DFL)  # a second one ends the process on the spot
+    raise Stopped(number)
+
+
+def _end(error: BaseException) -> int:
+    """Say what ended the command, if there is anything to say; the exit code."""
+    if isinstance(error, Stopped):
+        say(f"stopped by {signal.Signals(error.number).name}")
+        return 128 + error.number
+    if isinstance(error, BrokenPipeError):
+        discard(sys.stdout)
+        return 128 + signal.SIGPIPE
+    if isinstance(error, SeqmixError):
+        if error.exit_code == os.EX_IOERR:
+            discard(sys.stdout)
+        say(str(error))
+        return error.exit_code
+    if isinstance(error, OSError) and error.strerror:
+        discard(sys.stdout)
+        say(": ".join(str(part) for part in (error.filename, error.strerror) if part))
+        return 1
+    if isinstance(error, MemoryError):
+        say("not enough memory")
+        return 1
+    if os.environ.get("SEQMIX_DEBUG") == "1":
+        import traceback
+
+        traceback.print_exception(error)
+    found = f"{type(error).__name__}: {error}"
+    say(f"unexpected {found}; please report it (SEQMIX_DEBUG=1 shows where it happened)")
+    return 1

@@ -1,0 +1,51 @@
+"""`seqmix weights`: how the weights of the models moved along a log."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import click
+
+from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes_models, writes_answer
+from seqmix.cli.writer import Writer, bits, percent
+
+if TYPE_CHECKING:
+    from seqmix.weights import Weights
+
+
+@click.command("weights", cls=Helpful, example="seqmix weights line.csv --column state --every 1000")
+@option("--every", type=click.IntRange(min=1), metavar="N", help="Rows between two lines of the history.")
+@takes_models
+@reads_log
+@writes_answer
+def command(source: Source, answer: Answer, models: list[str] | None, every: int | None) -> None:
+    """Show which models explain LOG, and how their weights moved.
+
+    A weight is the posterior probability of a model after the rows read so far. CSV and JSON Lines carry the
+    history; the table shows the final weights with the leading setting and the loss of each model.
+    """
+    import seqmix
+
+    with answer.open() as writer, source.open() as log:
+        _write(writer, seqmix.weights(log, every=every, models=models))
+
+
+def _write(writer: Writer, weights: Weights) -> None:
+    if writer.format == "jsonl":
+        for row, time, by_model in weights.history:
+            writer.record({"row": row, "time": time, "weights": by_model})
+    elif writer.format == "csv":
+        writer.row(("row", "time", "model", "weight"))
+        for row, time, by_model in weights.history:
+            for model, weight in by_model.items():
+                writer.row((row, time, model, weight))
+    else:
+        writer.table(
+            [("model", "<"), ("leading setting", "<"), ("weight", ">"), ("bits", ">"), ("bits a row", ">"),
+             ("prior cost", ">")],
+            [
+                (part["name"], part["setting"], percent(part["weight"]), bits(part["bits"]),
+                 bits(part["bits_per_row"]), bits(part["prior_cost_bits"]))
+                for part in weights.models
+            ],
+        )  # fmt: skip

@@ -1,0 +1,163 @@
+"""The mixture: all models side by side, each weighed by its prior and by how well it has predicted."""
+
+from __future__ import annotations
+
+import itertools
+import os
+import threading
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from seqmix.mixture.weights import RATES, Weights
+from seqmix.models import registry
+from seqmix.models.keep import Kept
+from seqmix.models.protocol import Ask, Floats, Model, StatesLaw, Walk, split
+from seqmix.series.rows import CHUNK, Rows
+
+_WORTH_THREADS = 512  # rows; below, starting threads costs more than it saves
+
+
+class Mixture(Kept):
+    """A weighted Bayesian mixture of models over one log of states or bytes.
+
+    models: model objects, or names of the library, or None for all that fit; kind: "states" or "bytes";
+    timed: whether rows come with times; rates: fixed-share rates of the switching half, () for static Bayes alone.
+    Codes are numbered in order of first appearance; a byte is its own code.
+    """
+
+    kept = ("bits", "model_bits", "rows", "awake", "seen")
+
+    def __init__(
+        self,
+        models: Sequence[str] | Sequence[Model] | None = None,
+        *,
+        kind: str = "states",
+        timed: bool = False,
+        rates: Sequence[float] = RATES,
+    ) -> None:
+        names = None if models is None else [model for model in models if isinstance(model, str)]
+        given = [model for model in models or () if not isinstance(model, str)]
+        self.models: list[Model] = given or list(registry.make(kind, timed, names))
+        self.weights = Weights([model.prior_cost for model in self.models], rates)
+        self.seen = 256 if kind == "bytes" else 0
+        self.rows = 0
+        self.bits = 0.0
+        self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
+        self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows predicted by each model itself
+
+    def parts(self) -> dict[str, Kept]:
+        return {"weights": self.weights} | {m.name: m for m in self.models if isinstance(m, Kept)}
+
+    @property
+    def names(self) -> list[str]:
+        return [model.name for model in self.models]
+
+    def absorb(self, rows: Rows | npt.ArrayLike, ask: Ask | None = None) -> Floats:
+        """Predict and learn rows (Rows, or codes (n,)): loss of each in bits, (n,), from weights and laws before it.
+
+        `ask` names rows whose whole law is wanted. Any chunking gives the same losses.
+        """
+        if not isinstance(rows, Rows):
+            rows = Rows(np.asarray(rows, dtype=np.int32), None, self.rows)
+        if ask is None and len(rows) > CHUNK:
+            return np.concatenate([self.absorb(rows[at : at + CHUNK]) for at in range(0, len(rows), CHUNK)])
+        if not len(rows):
+            return np.zeros(0)
+        self.seen = max(self.seen, int(rows.codes.max()) + 1)
+        asks = [None if ask is None else ask.again() for _ in self.models]
+        losses = np.empty((len(rows), len(self.models)))
+
+        def one(i: int) -> None:
+            losses[:, i] = self.models[i].absorb(rows, asks[i])
+
+        _share_out(one, len(self.models), len(rows))
+        want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
+        bits, before = self.weights.mix(losses, want)
+        bits[rows.codes < 0] = 0.0
+        if ask is not None:
+            ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
+        asleep = np.isnan(losses)
+        self.rows += len(rows)
+        self.bits += float(bits.sum())
+        self.model_bits += np.where(asleep, bits[:, None], losses).sum(axis=0)
+        self.awake += (~asleep).sum(axis=0)
+        return bits
+
+    def predict(self, time: int | None = None) -> StatesLaw:
+        """Law of the next row, at `time` (microseconds) where the log has times."""
+        laws = [model.predict(time) for model in self.models]
+        weights = self.weights.now()
+        masses = np.einsum("i,ik->k", weights, np.stack([law.masses for law in laws]))
+        return StatesLaw(masses, float(weights @ np.array([law.unseen for law in laws])))
+
+    def walk(
+        self, steps: int, rng: np.random.Generator, times: Sequence[int | None] | None = None, paths: int = 2000
+    ) -> Walk:
+        """Law of each of the next steps: exact for the first, and while at most `paths` continuations are there.
+
+        A continuation belongs to one model, drawn by weight, which goes on alone along it: the joint law of a
+        Bayes mixture. Models with less than 1/10,000 of the weight are left out after the first step.
+        """
+        weights = self.weights.now()
+        first = self.predict(None if times is None else times[0])
+        laws = np.zeros((steps, len(first.masses) + 1))
+        lasting = np.flatnonzero(weights > 1e-4)
+        exact = steps
+        for i in lasting if steps > 1 else []:
+            weight = weights[i] / weights[lasting].sum()
+            walk = self.models[i].walk(steps, max(int(paths * weight), 64), rng, times)
+            laws += weight * walk.laws
+            exact = min(exact, walk.exact)
+        laws[0, :-1], laws[0, -1] = first.masses, first.unseen
+        return Walk(laws, exact)
+
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> npt.NDArray[np.int32]:
+        """Joint continuations, (paths, steps) codes in random order; the number of states seen = an unseen one."""
+        shares = split(self.weights.now(), paths, rng)
+        drawn = [
+            model.sample(steps, int(share), rng, times)
+            for model, share in zip(self.models, shares, strict=True)
+            if share
+        ]
+        return rng.permutation(np.concatenate(drawn))
+
+    def settings(self) -> dict[str, str]:
+        """Leading setting of each model."""
+        return {model.name: model.setting() for model in self.models}
+
+    def state(self) -> dict[str, Any]:
+        """Everything learned: flat, numpy arrays and plain scalars."""
+        return super().state()
+
+
+def _share_out(work: Any, jobs: int, rows: int) -> None:
+    """Run work(0..jobs-1), on all cores when there is enough of it. Raises what the first failing job raised."""
+    workers = min(len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1, jobs)
+    if workers < 2 or rows < _WORTH_THREADS:
+        for job in range(jobs):
+            work(job)
+        return
+    turn = itertools.count()
+    failed: list[BaseException] = []
+
+    def run() -> None:
+        # from the last to the first: the heavier models stand later in the library
+        while (job := jobs - 1 - next(turn)) >= 0 and not failed:
+            try:
+                work(job)
+            except BaseException as error:
+                failed.append(error)
+
+    threads = [threading.Thread(target=run) for _ in range(workers - 1)]
+    for thread in threads:
+        thread.start()
+    run()
+    for thread in threads:
+        thread.join()
+    if failed:
+        raise failed[0]

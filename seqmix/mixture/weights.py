@@ -1,0 +1,71 @@
+"""Posterior weights over models: static Bayes and fixed share, half and half.
+
+Static Bayes loses at most the prior cost more than any model, on any log. Fixed share (Herbster & Warmuth 1998)
+follows a log whose best model changes. Mixed half and half they lose at most one bit more than the better one.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import numpy.typing as npt
+
+from seqmix.kernels import weights as kernel
+from seqmix.models.keep import Kept
+
+Floats = npt.NDArray[np.float64]
+
+RATES = (0.05, 0.005, 0.0005)
+"""Chances, a row, that another model takes over; each rate starts with an equal part of the switching half."""
+
+
+class Weights(Kept):
+    """Weights of models with prior 2^-cost, normalised; `rates` = () is static Bayes alone."""
+
+    kept = ("behind", "shares", "camps")
+
+    def __init__(self, costs: Sequence[float] | Floats, rates: Sequence[float] = RATES) -> None:
+        """costs (models,): prior costs in bits, up to a constant."""
+        prior = np.exp2(-np.asarray(costs, dtype=np.float64))
+        self.prior: Floats = prior / prior.sum()
+        self.costs: Floats = -np.log2(self.prior)  # bits, normalised
+        self._rates = np.array(rates, dtype=np.float64)
+        self.behind: Floats = self.costs.copy()
+        self.shares: Floats = np.tile(self.prior, (len(rates), 1))
+        halves = [1.0] + [1.0 + np.log2(len(rates))] * len(rates) if rates else [0.0]
+        self.camps: Floats = np.array(halves, dtype=np.float64)
+
+    def mix(self, losses: Floats, want: npt.NDArray[np.int32]) -> tuple[Floats, Floats]:
+        """Learn losses (n, models) in bits, NaN = asleep.
+
+        Returns the loss of the mixture (n,) and the weights before the rows with want[t] >= 0, (asked, models).
+        """
+        rows, models = losses.shape
+        before = np.empty((max(int(want.max(initial=-1)) + 1, 1), models))
+        if models == 1:
+            before[:] = 1.0
+            return np.nan_to_num(losses[:, 0], nan=0.0), before
+        bits = np.empty(rows)
+        view = memoryview
+        # a memoryview cannot have zero rows: without rates, pass one line that no rate reads
+        shares = self.shares if len(self._rates) else np.zeros((1, models))
+        kernel.update(
+            view(np.ascontiguousarray(losses)), view(self.prior), len(self._rates),
+            view(self._rates if len(self._rates) else np.zeros(1)), view(self.behind), view(shares),
+            view(self.camps), view(np.empty(models)), view(want), view(before), view(bits),
+        )  # fmt: skip
+        return bits, before
+
+    def now(self) -> Floats:
+        """Weights (models,) after all rows so far; they add to 1."""
+        camps = np.exp2(-self.camps)
+        weights = camps[0] * np.exp2(-self.behind) + camps[1:] @ self.shares
+        return weights / weights.sum()
+
+    def static_bits(self) -> Floats:
+        """Minus log2 of the weight of each model within the static half, (models,), that half's own weight in it.
+
+        From here on the mixture loses at most so many bits more than the model.
+        """
+        return self.behind + self.camps[0]

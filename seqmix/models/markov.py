@@ -1,0 +1,31 @@
+"""Markov: the next state depends on the last k states, and on nothing else."""
+
+from __future__ import annotations
+
+from seqmix.models.context import ContextTree, Contexts
+from seqmix.models.history import History, Keys, Past
+from seqmix.models.protocol import Setting, StatesModel
+
+ORDERS = (1, 2, 3, 4)
+
+
+def _last(k: int) -> Contexts:
+    def contexts(past: Past) -> list[Keys]:
+        return [past.order(k)]
+
+    return contexts
+
+
+class Markov(StatesModel):
+    name = "markov"
+    prior_cost = 3.0
+    summary = "the last 1 to 4 states decide"
+    source = "Krichevsky & Trofimov 1981"
+
+    def __init__(self, alphabet: int = 0) -> None:
+        settings: list[Setting] = [
+            ContextTree(f"order {k}, prior count {text}", _last(k), alphabet=alphabet, alpha=alpha, most=18)
+            for k in ORDERS
+            for alpha, text in ((1 / 2, "1/2"), (1 / 16, "1/16"))
+        ]
+        super().__init__(settings, History(max(ORDERS)), alphabet)

@@ -1,0 +1,272 @@
+"""What every model is: a name, a prior cost, and the abilities to absorb, predict, sample, and hand over its state.
+
+`Model` is the protocol that the mixture relies on. `StatesModel` is what the models of states and bytes
+share: a history, a law of the unseen, and a bank of `Setting`s of one explanation, mixed inside by Bayes.
+"""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any, ClassVar, Protocol, runtime_checkable
+
+import numpy as np
+import numpy.typing as npt
+
+from seqmix.mixture.weights import Weights
+from seqmix.models.history import Codes, Fork, History, Past
+from seqmix.models.keep import Kept
+from seqmix.models.novelty import Novelty
+from seqmix.series.rows import Rows
+
+Floats = npt.NDArray[np.float64]
+
+
+class Ask:
+    """Rows of a chunk whose whole law is wanted, not just the loss.
+
+    want (n,) int32: the line of `laws` for each row, or -1. laws (asked, states + 1): masses of the states,
+    in code order, and of an unseen one, last.
+    """
+
+    def __init__(self, want: npt.NDArray[np.int32], states: int) -> None:
+        self.want = want
+        self.at = np.flatnonzero(want >= 0)
+        self.laws = np.zeros((max(len(self.at), 1), states + 1))
+
+    @classmethod
+    def of(cls, rows: int, at: Sequence[int] | npt.NDArray[np.intp], states: int) -> Ask:
+        """Ask for the rows `at` (ascending) of a chunk of `rows`."""
+        want = np.full(rows, -1, dtype=np.int32)
+        want[np.asarray(at, dtype=np.intp)] = np.arange(len(at), dtype=np.int32)
+        return cls(want, states)
+
+    def again(self) -> Ask:
+        """The same rows, laws still blank."""
+        return Ask(self.want, self.laws.shape[1] - 1)
+
+
+@dataclass(frozen=True)
+class StatesLaw:
+    """The law of the next row: `masses` (states,) in code order and `unseen`; they add to 1."""
+
+    masses: Floats
+    unseen: float
+
+
+@dataclass(frozen=True)
+class Walk:
+    """Where continuations lead: laws (steps, states + 1), unseen last; the first `exact` steps are exact."""
+
+    laws: Floats
+    exact: int
+
+
+@runtime_checkable
+class Model(Protocol):
+    """One explanation of a log of states or bytes.
+
+    Codes number the states in order of first appearance, -1 is a missing row: it costs nothing and teaches
+    nothing. Any way of cutting the rows into chunks must give the same losses to the last bit.
+    """
+
+    name: str
+    kinds: tuple[str, ...]
+    prior_cost: float  # bits
+
+    def absorb(self, rows: Rows, ask: Ask | None = None) -> Floats:
+        """Loss of each row in bits, (n,), predicted before it is learned; fills `ask.laws`. NaN = asleep."""
+
+    def predict(self, time: int | None = None) -> StatesLaw:
+        """Law of the next row, at `time` (microseconds) where the log has times."""
+
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Codes:
+        """Joint continuations, (paths, steps) codes; the number of states seen stands for an unseen one."""
+
+    def walk(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Walk:
+        """Law of each of the next steps, over at most `paths` continuations."""
+
+    def setting(self) -> str:
+        """The leading setting of a bank, in a few words; empty where there is one only."""
+
+    def state(self) -> dict[str, Any]:
+        """Everything learned, as numpy arrays and plain scalars."""
+
+    def restore(self, state: dict[str, Any]) -> None:
+        """Go on from a `state()`."""
+
+
+class Setting(Kept, ABC):
+    """One setting of an explanation. All its laws are over the states seen so far; novelty comes on top."""
+
+    label: str
+
+    @abstractmethod
+    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+        """Loss of each row in bits among the states seen, (n,); 0 for a new state and a missing row."""
+
+    @abstractmethod
+    def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
+        """Law after each path of a fork, (paths, states), nothing learned. `place`: see `start`."""
+
+    def start(self, paths: int) -> npt.NDArray[np.int64]:
+        """Where this setting stands, once for each path: (paths, k) numbers of its own, k may be 0."""
+        return np.zeros((paths, 0), dtype=np.int64)
+
+    def move(self, place: npt.NDArray[np.int64], fork: Fork, codes: Codes) -> npt.NDArray[np.int64]:
+        """`place` after each path has gone on by its state of `codes` (the fork is still before it)."""
+        return place
+
+
+class StatesModel(Kept):
+    """A bank of settings of one explanation of states or bytes. See `Model` for the abilities.
+
+    Sampled and enumerated continuations are frozen at the present row: contexts move along a path, counts stay.
+    """
+
+    name: ClassVar[str]
+    kinds: ClassVar[tuple[str, ...]] = ("states", "bytes")
+    prior_cost: ClassVar[float]
+    summary: ClassVar[str]
+    source: ClassVar[str]
+    needs_times: ClassVar[bool] = False
+
+    kept = ("seen",)
+
+    def __init__(self, settings: Sequence[Setting], history: History, alphabet: int = 0) -> None:
+        """`alphabet`: the number of states where it is known beforehand (256 for bytes), 0 where it grows."""
+        self.settings = list(settings)
+        self.seen = alphabet
+        self._alphabet = alphabet
+        self._history = history
+        self._novelty = Novelty(alphabet)
+        self._weights = Weights(np.zeros(len(self.settings)), rates=(0.005,))
+
+    def parts(self) -> dict[str, Kept]:
+        own: dict[str, Kept] = {"history": self._history, "novelty": self._novelty, "weights": self._weights}
+        return own | {f"setting{i}": setting for i, setting in enumerate(self.settings)}
+
+    def absorb(self, rows: Rows, ask: Ask | None = None) -> Floats:
+        if not len(rows):
+            return np.zeros(0)
+        codes = rows.codes
+        self.seen = max(self.seen, int(codes.max()) + 1)
+        asked = ask or Ask(np.full(len(rows), -1, dtype=np.int32), 0)
+        past = self._history.ahead(codes, rows.times)
+        losses = np.empty((len(rows), len(self.settings)))
+        laws = []
+        for i, setting in enumerate(self.settings):
+            laws.append(asked.again().laws)
+            losses[:, i] = setting.learn(past, codes, asked.want, laws[i])
+        past.close()
+        bits, weights = self._weights.mix(losses, asked.want)
+        novel, unseen = self._novelty.absorb(codes)
+        if ask is not None:
+            ask.laws[:] = np.einsum("mi,imk->mk", weights, np.stack(laws))
+            ask.laws *= (1.0 - unseen[ask.at])[:, None]
+            ask.laws[:, -1] = unseen[ask.at]
+        return np.where(codes < 0, 0.0, bits + novel)
+
+    def predict(self, time: int | None = None) -> StatesLaw:
+        laws = self._walk_laws(np.array(self._weights.now()), 1, time)
+        return StatesLaw(laws[0, :-1], float(laws[0, -1]))
+
+    def _walk_laws(self, weights: Floats, paths: int, time: int | None) -> Floats:
+        fork = self._history.fork(paths, time)
+        laws = sum(
+            weight * self._whole(setting, fork, setting.start(paths))
+            for weight, setting in zip(weights, self.settings, strict=True)
+        )
+        assert isinstance(laws, np.ndarray)
+        return laws
+
+    def _whole(self, setting: Setting, fork: Fork, place: npt.NDArray[np.int64]) -> Floats:
+        """Laws of one setting after each path with the unseen mass: (paths, states + 1)."""
+        out = np.empty((fork.size, self.seen + 1))
+        unseen = self._novelty.unseen()
+        out[:, :-1] = setting.laws(fork, place, self.seen) * (1.0 - unseen)
+        out[:, -1] = unseen
+        return out
+
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Codes:
+        when = list(times) if times is not None else [None] * steps
+        out = np.empty((0, steps), dtype=np.int32)
+        for setting, share in zip(self.settings, split(self._weights.now(), paths, rng), strict=True):
+            if share:
+                fork = self._history.fork(share, when[0])
+                place = setting.start(share)
+                for step in range(steps):
+                    codes = draw(self._whole(setting, fork, place), rng)
+                    place = setting.move(place, fork, codes)
+                    fork.push(codes, when[step + 1] if step + 1 < steps else None)
+                out = np.concatenate([out, fork.path])
+        return out
+
+    def walk(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Walk:
+        when = list(times) if times is not None else [None] * steps
+        laws = np.zeros((steps, self.seen + 1))
+        exact = steps
+        weights = self._weights.now()
+        lasting = np.flatnonzero(weights > 1e-4)
+        for i in lasting:
+            weight = weights[i] / weights[lasting].sum()
+            part, steps_exact = self._walk_setting(self.settings[i], steps, max(int(paths * weight), 64), rng, when)
+            laws += weight * part
+            exact = min(exact, steps_exact)
+        return Walk(laws, exact)
+
+    def _walk_setting(
+        self, setting: Setting, steps: int, paths: int, rng: np.random.Generator, when: list[int | None]
+    ) -> tuple[Floats, int]:
+        """Follow every continuation while there are at most `paths` of them, then `paths` drawn ones."""
+        laws = np.zeros((steps, self.seen + 1))
+        exact = steps
+        fork = self._history.fork(1, when[0])
+        place = setting.start(1)
+        mass = np.ones(1)
+        for step in range(steps):
+            ahead = self._whole(setting, fork, place)
+            laws[step] = mass @ ahead
+            if step + 1 == steps:
+                break
+            whole = mass[:, None] * ahead
+            which, codes = np.nonzero(whole > 1e-9)
+            if len(which) <= paths:
+                mass = whole[which, codes]
+                mass /= mass.sum()
+            else:
+                exact = min(exact, step + 1)
+                flat = np.cumsum(whole.ravel())
+                spots = (np.arange(paths) + rng.random()) / paths * flat[-1]
+                which, codes = np.divmod(np.minimum(np.searchsorted(flat, spots), whole.size - 1), whole.shape[1])
+                mass = np.full(paths, 1.0 / paths)
+            fork.select(which)
+            place = setting.move(place[which], fork, codes.astype(np.int32))
+            fork.push(codes.astype(np.int32), when[step + 1])
+        return laws, exact
+
+    def setting(self) -> str:
+        return self.settings[int(np.argmax(self._weights.now()))].label if len(self.settings) > 1 else ""
+
+
+def split(weights: Floats, paths: int, rng: np.random.Generator) -> npt.NDArray[np.int64]:
+    """How many of `paths` each model gets: within one of its due, and fair on average (systematic sampling)."""
+    edges = np.floor(np.cumsum(weights / weights.sum()) * paths + rng.random()).astype(np.int64)
+    edges[-1] = paths
+    return np.diff(np.minimum(edges, paths), prepend=0)
+
+
+def draw(laws: Floats, rng: np.random.Generator) -> Codes:
+    """One code from each law, (paths,)."""
+    edges = np.cumsum(laws, axis=1)
+    spots = rng.random(len(laws)) * edges[:, -1]
+    return np.minimum((edges <= spots[:, None]).sum(axis=1), laws.shape[1] - 1).astype(np.int32)

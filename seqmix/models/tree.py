@@ -1,0 +1,28 @@
+"""Tree: how many of the last states matter depends on what they were; all context trees are weighed at once."""
+
+from __future__ import annotations
+
+from seqmix.models.context import ContextTree
+from seqmix.models.history import History, Keys, Past
+from seqmix.models.protocol import StatesModel
+
+DEPTH = 16
+
+
+def _orders(past: Past) -> list[Keys]:
+    return [past.order(k) for k in range(DEPTH + 1)]
+
+
+class Tree(StatesModel):
+    name = "tree"
+    prior_cost = 3.0
+    summary = f"all context trees down to {DEPTH} rows back, weighed"
+    source = "Willems, Shtarkov & Tjalkens 1995; Tjalkens, Willems & Shtarkov 1994"
+
+    def __init__(self, alphabet: int = 0) -> None:
+        settings = [
+            ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2),
+            ContextTree("prior count 1/10", _orders, alphabet=alphabet, alpha=1 / 10),
+            ContextTree("prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=120),
+        ]
+        super().__init__(settings, History(DEPTH), alphabet)

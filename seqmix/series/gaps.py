@@ -1,0 +1,90 @@
+"""Cadence and gaps: a regular log that skips steps of its clock gets missing rows there."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+
+import numpy as np
+
+from .rows import CHUNK, MISSING, Piece
+
+REGULAR = 0.9
+"""The share of steps that must equal the cadence for a log to be regular."""
+
+MAX_FILL = 1_000_000
+"""Rows put into one gap at most; a longer gap is left as it is."""
+
+
+def find_cadence(times: np.ndarray) -> int | None:
+    """The step in microseconds that at least 90 % of the steps between `times` equal; None without one."""
+    steps, counts = np.unique(np.diff(times), return_counts=True)
+    if len(steps) == 0:
+        return None
+    best = int(counts.argmax())
+    return int(steps[best]) if steps[best] > 0 and counts[best] >= REGULAR * counts.sum() else None
+
+
+class GapFiller:
+    """Puts missing rows into the gaps of a log with a cadence.
+
+    A step within 10 % of k cadences, k >= 2, is a gap of k - 1 rows.
+
+    gaps: gaps met so far. filled: rows put in. left: gaps too long to fill. disorder: rows whose time is not
+    later than that of the row before; they are kept as they are.
+    """
+
+    def __init__(self, cadence: int | None) -> None:
+        self.cadence = cadence
+        self.gaps = self.filled = self.left = self.disorder = 0
+        self._last: int | None = None
+
+    def fill(self, pieces: Iterable[Piece]) -> Iterator[Piece]:
+        """The rows of `pieces` with missing rows put in, `CHUNK` at a time or fewer."""
+        for codes, times in pieces:
+            if times is None or not len(times):
+                yield codes, times
+                continue
+            before = int(times[0]) - 1 if self._last is None else self._last
+            steps = np.diff(times, prepend=before)
+            self.disorder += int(np.count_nonzero(steps <= 0))
+            self._last = int(times[-1])
+            missing = self._missing(steps)
+            if missing is None:
+                yield codes, times
+            else:
+                yield from self._spread(codes, times, missing)
+
+    def notes(self) -> list[str]:
+        """What was met, a sentence each."""
+        notes = []
+        if self.filled:
+            notes.append(f"missing rows put into gaps of the clock: {self.filled}, in {self.gaps - self.left} gaps")
+        if self.left:
+            notes.append(f"gaps of more than {MAX_FILL} rows, left as they are: {self.left}")
+        if self.disorder:
+            notes.append(f"rows not later than the row before, kept as they are: {self.disorder}")
+        return notes
+
+    def _missing(self, steps: np.ndarray) -> np.ndarray | None:
+        """How many rows are missing before each row; None if none."""
+        if self.cadence is None or steps.max() < 1.9 * self.cadence:
+            return None
+        whole = (2 * steps + self.cadence) // (2 * self.cadence)
+        gap = (whole >= 2) & (10 * np.abs(steps - whole * self.cadence) <= self.cadence)
+        missing = np.where(gap, whole - 1, 0)
+        long = missing > MAX_FILL
+        missing[long] = 0
+        self.gaps += int(gap.sum())
+        self.left += int(long.sum())
+        self.filled += int(missing.sum())
+        return missing if missing.any() else None
+
+    def _spread(self, codes: np.ndarray, times: np.ndarray, missing: np.ndarray) -> Iterator[Piece]:
+        """The rows at their new places, computed a chunk at a time: one gap can be longer than the log."""
+        places = np.arange(len(codes)) + np.cumsum(missing)
+        for start in range(0, int(places[-1]) + 1, CHUNK):
+            rows = np.arange(start, min(start + CHUNK, int(places[-1]) + 1))
+            following = np.searchsorted(places, rows)
+            steps_back = places[following] - rows
+            new_codes = np.where(steps_back == 0, codes[following], MISSING).astype(np.int32)
+            yield new_codes, times[following] - steps_back * self.cadence

@@ -1,0 +1,147 @@
+"""Opening a log: all that is decided from its first lines, before a row is read."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from itertools import islice
+
+import numpy as np
+
+from ..errors import DataError, OptionError, visible
+from .alphabet import Alphabet, Codes
+from .clock import Clock, TimeTextError, is_time
+from .columns import Options, Wanted
+from .gaps import find_cadence
+from .jsonlines import JsonLines
+from .kinds import KINDS, NO_NUMBERS, NumberText, are_numbers, is_text
+from .layout import Beside, Layout
+from .lines import Lines
+from .log import Log
+from .rows import CHUNK, Piece
+from .separated import Separated
+from .source import LogFile, Source
+from .text import Text
+
+
+def open_log(
+    log: LogFile,
+    *,
+    column: Wanted = None,
+    time: Wanted = None,
+    kind: str | None = None,
+    header: bool | None = None,
+    alphabet: Alphabet | None = None,
+) -> Log:
+    """Open a log: a path, "-" for standard input, or an open file.
+
+    Lines, CSV, TSV, JSON Lines and bytes are told apart by the first `CHUNK` lines or the first MiB;
+    `Log.notes` says what was assumed. All may be compressed: gzip and zstandard are seen by content, brotli
+    by the ending .br.
+
+    column, time: name or number from 1 of the columns of values and times. kind: "states" or "bytes".
+    header: whether the first line names the columns. alphabet: of another log, to go on with its states.
+    Blank cells, NA, NaN and null are missing rows; gaps of a log with a regular clock become such rows.
+    Blanks around cells do not count, save in JSON strings.
+
+    Caps: 16 GiB out of a compressed log, 16 MiB a line or record, 1,048,576 states.
+    Raises DataError for a log that cannot be read, OptionError for columns or a kind that it does not have.
+    """
+    if alphabet is not None:
+        known = "bytes" if alphabet.fixed else "states"
+        if kind not in (None, known):
+            raise OptionError(f"the alphabet is one of {known}, so the log cannot be read as {kind}")
+        kind = known
+    if kind not in (None, *KINDS):
+        raise OptionError(f"no kind '{visible(str(kind))}'; the kinds are {', '.join(KINDS)}")
+    source = Source(log)
+    try:
+        if kind == "numbers":
+            raise OptionError(NO_NUMBERS.format(visible(source.name)))
+        options = Options(column, time, kind, header)
+        text = Text(source)
+        if _as_bytes(text, options):
+            return _open_bytes(source, text, options, alphabet)
+        return _open_text(source, text, options, Alphabet() if alphabet is None else alphabet)
+    except BaseException:
+        source.close()
+        raise
+
+
+def _as_bytes(text: Text, options: Options) -> bool:
+    if options == Options():
+        return not is_text(text.sample, text.whole)
+    return options.kind == "bytes"
+
+
+def _open_bytes(source: Source, text: Text, options: Options, alphabet: Alphabet | None) -> Log:
+    if (options.column, options.time, options.header) != (None, None, None):
+        raise OptionError(f"{visible(source.name)} is read as bytes, which have no columns and no header")
+    notes = [] if options.kind else ["taken as bytes, as it is not UTF-8 text; --as states takes it as text"]
+    return Log(
+        name=source.name,
+        kind="bytes",
+        alphabet=Alphabet.for_bytes() if alphabet is None else alphabet,
+        format="bytes",
+        compression=source.compression,
+        notes=notes,
+        pieces=((np.frombuffer(block, np.uint8).astype(np.int32), None) for block in text.raw()),
+        close=source.close,
+    )
+
+
+def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet) -> Log:
+    name = source.name
+    start = text.sample_text()
+    layout: Layout = JsonLines.detect(start) or Separated.detect(start, text.whole) or Lines(start)
+    notes: list[str] = []
+    sample = layout.sample(name, options, notes)
+    value, when = sample.choose(options.column, options.time, notes)
+    if options.kind is None and are_numbers(sample.columns[value], NumberText if layout.typed else str):
+        column = "" if sample.single else f"column {sample.describe(value)} of "
+        raise OptionError(NO_NUMBERS.format(column + visible(name)))
+    times = [] if when is None else sample.columns[when]
+    clock = Clock.like(next(filter(is_time, times), ""))
+    beside = Beside()
+    codes = Codes(alphabet, name, strip=not layout.typed)
+    return Log(
+        name=name,
+        kind="states",
+        alphabet=alphabet,
+        format=layout.name,
+        column=sample.label(value),
+        time_column=None if when is None else sample.label(when),
+        separator=layout.separator,
+        header=sample.names is not None and layout.name != "jsonl",
+        compression=source.compression,
+        clock=clock,
+        cadence=_cadence(clock, times),
+        notes=notes,
+        pieces=_pieces(layout.cells(text, sample, value, when, beside), beside, codes, clock, when),
+        close=source.close,
+    )
+
+
+def _cadence(clock: Clock, times: Sequence[str]) -> int | None:
+    try:
+        return find_cadence(clock.parse(times))
+    except TimeTextError as error:
+        # The bad time is reported when its row is reached.
+        return find_cadence(clock.parse(times[: error.index]))
+
+
+def _pieces(
+    cells: Iterator[str], beside: Beside, codes: Codes, clock: Clock, when: int | None
+) -> Iterator[Piece]:
+    """`CHUNK` rows at a time, so that the alphabet at a row does not depend on how the bytes arrive."""
+    coded = map(codes.__getitem__, cells)
+    while len(batch := np.fromiter(islice(coded, CHUNK), np.int32)):
+        times = None
+        if when is not None:
+            try:
+                times = clock.parse(beside.times)
+            except TimeTextError as error:
+                message = f"{error.reason}: '{visible(beside.times[error.index])}'"
+                raise DataError(message, codes.name, beside.lines[error.index], when + 1) from None
+        beside.times.clear()
+        beside.lines.clear()
+        yield batch, times
