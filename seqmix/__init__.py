@@ -1,3 +1,70 @@
-"""seqmix: what comes next in a log, with honest odds."""
+"""seqmix: what comes next in a log, with honest odds.
+
+    import seqmix
+    forecast = seqmix.forecast(["fill", "cap", "label", "fill", "cap"], steps=3)
+    forecast.steps[0].probabilities
+
+Everything is loaded on first use, so that importing the package costs next to nothing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
 
 __version__ = "0.1.0"
+
+if TYPE_CHECKING:
+    from seqmix.describing import Description, describe
+    from seqmix.errors import SeqmixError
+    from seqmix.forecasting import Forecast, forecast
+    from seqmix.mixture.mixture import Mixture
+    from seqmix.scoring import Score, score
+    from seqmix.series import Log, Series, open_log, read
+    from seqmix.weighing import Weights, weights
+
+_HOME = {
+    "Description": "seqmix.describing",
+    "Forecast": "seqmix.forecasting",
+    "Log": "seqmix.series",
+    "Mixture": "seqmix.mixture.mixture",
+    "Score": "seqmix.scoring",
+    "SeqmixError": "seqmix.errors",
+    "Series": "seqmix.series",
+    "Weights": "seqmix.weighing",
+    "describe": "seqmix.describing",
+    "forecast": "seqmix.forecasting",
+    "open_log": "seqmix.series",
+    "read": "seqmix.series",
+    "score": "seqmix.scoring",
+    "weights": "seqmix.weighing",
+}
+
+__all__ = [
+    "Description",
+    "Forecast",
+    "Log",
+    "Mixture",
+    "Score",
+    "SeqmixError",
+    "Series",
+    "Weights",
+    "__version__",
+    "describe",
+    "forecast",
+    "open_log",
+    "read",
+    "score",
+    "weights",
+]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOME:
+        raise AttributeError(f"module 'seqmix' has no attribute {name!r}")
+    value = globals()[name] = getattr(import_module(_HOME[name]), name)
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

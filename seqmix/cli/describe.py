@@ -59,9 +59,7 @@ def _lines(record: dict[str, Any]) -> Iterator[tuple[str, Any]]:
 
 def _write_table(writer: Writer, record: dict[str, Any]) -> None:
     known = {label: record[field] for field, label in FIELDS.items() if record[field] is not None}
-    writer.fields(
-        {label: bits(value) if isinstance(value, float) else str(value) for label, value in known.items()}
-    )
+    writer.fields({label: bits(value) if isinstance(value, float) else str(value) for label, value in known.items()})
     top = list(record["states"].items())[:SHOWN]
     present = record["rows"] - record["missing"]
     writer.table(

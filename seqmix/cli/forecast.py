@@ -10,7 +10,7 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
 from seqmix.cli.writer import Writer, percent
 
 if TYPE_CHECKING:
-    from seqmix.forecast import Forecast
+    from seqmix.forecasting import Forecast
 
 PLACES = ("most likely", "then", "then")  # the states of a step that the table names
 
@@ -23,9 +23,7 @@ PLACES = ("most likely", "then", "then")  # the states of a step that the table 
 @takes_models
 @reads_log
 @writes_answer
-def command(
-    source: Source, answer: Answer, models: list[str] | None, steps: int, paths: int | None, seed: int
-) -> None:
+def command(source: Source, answer: Answer, models: list[str] | None, steps: int, paths: int | None, seed: int) -> None:
     """Say what comes next after the last row of LOG.
 
     Each step gets the probability of every state, and of a state never seen before. Steps far ahead come from

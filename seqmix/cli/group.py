@@ -47,8 +47,7 @@ def _version(ctx: click.Context, param: click.Parameter, wanted: bool) -> None:
     from seqmix.kernels import MODE
 
     click.echo(
-        f"seqmix {seqmix.__version__}, kernels {MODE}, "
-        f"Python {platform.python_version()}, numpy {numpy.__version__}"
+        f"seqmix {seqmix.__version__}, kernels {MODE}, Python {platform.python_version()}, numpy {numpy.__version__}"
     )
     ctx.exit()
 

@@ -10,7 +10,7 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
 from seqmix.cli.writer import Writer, bits, percent
 
 if TYPE_CHECKING:
-    from seqmix.weights import Weights
+    from seqmix.weighing import Weights
 
 
 @click.command("weights", cls=Helpful, example="seqmix weights line.csv --column state --every 1000")

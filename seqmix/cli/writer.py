@@ -36,9 +36,7 @@ class Writer:
         self._name = name
         self._terminal = file.isatty()
         self.format = format or ("table" if self._terminal else "csv")
-        self._styled = self._terminal and not (
-            os.environ.get("NO_COLOR") or os.environ.get("TERM", "dumb") == "dumb"
-        )
+        self._styled = self._terminal and not (os.environ.get("NO_COLOR") or os.environ.get("TERM", "dumb") == "dumb")
         self._blocks = 0
         self._line = io.StringIO(newline="")
         # Ends its lines with "\r\n", so that a lone "\r" in a value is quoted in every version of Python.
@@ -192,8 +190,7 @@ def _failure(name: str, error: OSError) -> OutputError:
 def _width(text: str) -> int:
     """Columns `text` takes on a terminal."""
     return sum(
-        0 if unicodedata.combining(char) else 2 if unicodedata.east_asian_width(char) in "WF" else 1
-        for char in text
+        0 if unicodedata.combining(char) else 2 if unicodedata.east_asian_width(char) in "WF" else 1 for char in text
     )
 
 

@@ -10,10 +10,15 @@ import importlib
 import importlib.util
 import os
 import sys
+from collections.abc import Callable
 from pathlib import Path
 from types import ModuleType
+from typing import Any
 
 from seqmix.errors import KernelError
+
+view: Callable[[Any], memoryview] = memoryview
+"""How arrays are handed to a kernel: interpreted, a memoryview gives plain Python numbers, and quickly."""
 
 NAMES = ("contexts_cy", "repeats_cy", "weights_cy")
 _CHOICES = ("compiled", "interpreted")

@@ -281,6 +281,7 @@ def tree(
     alpha: cython.double,
     limit: cython.int,
     fresh: cython.int,
+    frozen: cython.bint,
     slots: cython.longlong[::1],
     known: cython.int[::1],
     own: cython.double[::1],
@@ -294,7 +295,7 @@ def tree(
     codes (n,) states, negative = learn nothing; keys (n, levels) context hashes, shortest context first;
     path[path_start[c]:path_start[c+1]] = (line, digit) of state c; child[line, digit] = state or -2 - line;
     mask[line] = digits in use; state = [states seen, lines used]; `room` = lines that may be used; `fresh` = new
-    context levels a row may add; want[t] = row of `laws` to fill with the law of row t, or -1.
+    context levels a row may add; `frozen`: predict only; want[t] = row of `laws` to fill with the law of row t, or -1.
     Writes bits (n,): minus log2 of the mass of the state among the states seen (0 where it is new or missing).
     """
     n: cython.Py_ssize_t = codes.shape[0]
@@ -329,10 +330,11 @@ def tree(
             if code < 0:
                 done = t + 1
                 continue
-            if state[1] + fresh * (path_start[code + 1] - path_start[code]) > room:
-                break
-            if code >= state[0]:
-                _mark(code, path_start, path, mask)
+            if not frozen:
+                if state[1] + fresh * (path_start[code + 1] - path_start[code]) > room:
+                    break
+                if code >= state[0]:
+                    _mark(code, path_start, path, mask)
             p = 1.0
             for step in range(path_start[code], path_start[code + 1]):
                 line = path[step, 0]
@@ -356,7 +358,8 @@ def tree(
                             zeros = counts[slot, 4 * j]
                             ones = counts[slot, 4 * j + 1]
                             own[d] = ((ones if bit else zeros) + alpha) / (zeros + ones + 2.0 * alpha)
-                            _count(counts, slot, j, bit, limit)
+                            if not frozen:
+                                _count(counts, slot, j, bit, limit)
                         # weigh from the longest known context down to the empty one
                         q = 0.5
                         for d in range(depth - 1, -1, -1):
@@ -366,12 +369,18 @@ def tree(
                             else:
                                 slot = slots[d]
                                 ratio = ratios[slot, 2 * j + 1]
-                                turned = ratio * mine / q
-                                ratios[slot, 2 * j + 1] = min(max(turned, RATIO_LEAST), RATIO_MOST)
+                                if not frozen:
+                                    turned = ratio * mine / q
+                                    ratios[slot, 2 * j + 1] = min(max(turned, RATIO_LEAST), RATIO_MOST)
                                 q = q + ratio / (1.0 + ratio) * (mine - q)
                         p *= q
                     j = 2 * j + bit
                 known[step - path_start[code]] = depth
+            if code < state[0]:
+                bits[t] = -log2(p)
+            done = t + 1
+            if frozen:
+                continue
             for step in range(path_start[code], path_start[code + 1]):
                 line = path[step, 0]
                 if mask[line] & (mask[line] - 1) == 0:
@@ -387,9 +396,6 @@ def tree(
                         j = 2 * j + bit
             if code >= state[0]:
                 state[0] = code + 1
-            else:
-                bits[t] = -log2(p)
-            done = t + 1
     return done
 
 
@@ -481,8 +487,10 @@ def _calibrate(
     if cell >= LAST_CELL:
         cell = LAST_CELL - 1
     place = place - cell
-    curves[curve, cell] = curves[curve, cell] + (bit - curves[curve, cell]) * 0.02 * (1.0 - place)
-    curves[curve, cell + 1] = curves[curve, cell + 1] + (bit - curves[curve, cell + 1]) * 0.02 * place
+    low: cython.double = curves[curve, cell]  # in double, or C would subtract in single precision
+    high: cython.double = curves[curve, cell + 1]
+    curves[curve, cell] = low + (bit - low) * 0.02 * (1.0 - place)
+    curves[curve, cell + 1] = high + (bit - high) * 0.02 * place
 
 
 @cython.cfunc
@@ -604,6 +612,7 @@ def pool(
     shift: cython.int,
     slowest: cython.double,
     gain: cython.double,
+    frozen: cython.bint,
     slots: cython.longlong[::1],
     known: cython.int[::1],
     nodes: cython.int[::1],
@@ -661,10 +670,11 @@ def pool(
             if code < 0:
                 done = t + 1
                 continue
-            if state[1] + levels * (path_start[code + 1] - path_start[code]) > room:
-                break
-            if code >= state[0]:
-                _mark(code, path_start, path, mask)
+            if not frozen:
+                if state[1] + levels * (path_start[code + 1] - path_start[code]) > room:
+                    break
+                if code >= state[0]:
+                    _mark(code, path_start, path, mask)
             total = 1.0
             m = 0
             hinted = guess[t] >= 0
@@ -693,6 +703,9 @@ def pool(
                             curve = _curve(keys[t, 1], node)
                             p = _calibrated(curves, curve, logit)
                             total *= p if bit else 1.0 - p
+                            if frozen:
+                                j = 2 * j + bit
+                                continue
                             _calibrate(curves, curve, logit, bit)
                             # the weights learn after the row: until then all its decisions share them
                             nodes[m] = node
@@ -721,6 +734,11 @@ def pool(
                             known[step - path_start[code]] -= 1
                 hinted = hinted and hint == digit
                 ahead += 1
+            if code < state[0]:
+                bits[t] = -log2(total)
+            done = t + 1
+            if frozen:
+                continue
             for j in range(m):
                 error = odds[j, levels]
                 strength = odds[j, levels + 1]
@@ -748,7 +766,4 @@ def pool(
                         j = 2 * j + bit
             if code >= state[0]:
                 state[0] = code + 1
-            else:
-                bits[t] = -log2(total)
-            done = t + 1
     return done

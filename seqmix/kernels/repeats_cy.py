@@ -34,13 +34,15 @@ def follow(
     shift: cython.int,
     least: cython.longlong,
     state: cython.longlong[::1],
+    frozen: cython.bint,
     guess: cython.int[::1],
     trust: cython.int[::1],
 ) -> None:
     """Follow the continuation of the longest repeated past.
 
     after (n,): hash of the last `least` rows up to and with row t; ring: the past, a power of two long;
-    places: where each hash was last seen, plus 1; state = [rows so far, pointer or -1, length, misses].
+    places: where each hash was last seen, plus 1 (`frozen`: no new place is kept);
+    state = [rows so far, pointer or -1, length, misses].
     Writes guess (n,), the state foretold for each row before it is read, or -1, and trust (n,) = 0..63:
     4 x min(length, 15) + min(wrong guesses lately, 3).
     """
@@ -78,7 +80,8 @@ def follow(
                 continue
             slot = cython.cast(cython.longlong, after[t] >> shift)
             found = places[slot] - 1
-            places[slot] = now + 1
+            if not frozen:
+                places[slot] = now + 1
             if (pointer < 0 or length < least) and found >= 0 and now - found < wrap - LONGEST:
                 same = 0
                 while same < LONGEST and same < found:
@@ -102,6 +105,7 @@ def bet(
     events: cython.double[:, ::1],
     seen: cython.double[::1],
     state: cython.longlong[::1],
+    frozen: cython.bint,
     want: cython.int[::1],
     laws: cython.double[:, ::1],
     bits: cython.double[::1],
@@ -142,7 +146,9 @@ def bet(
                 if right > 0.0 and code == guess[t]:
                     p = right
                 bits[t] = -log2(p)
-            else:
+            if frozen:
+                continue
+            if code >= state[0]:
                 state[0] = code + 1
             seen[code] += 1.0
             state[1] += 1
@@ -243,6 +249,7 @@ def parse(
     shift: cython.int,
     room: cython.longlong,
     full: cython.bint,
+    frozen: cython.bint,
     state: cython.longlong[::1],
     want: cython.int[::1],
     laws: cython.double[:, ::1],
@@ -253,7 +260,7 @@ def parse(
     edges (slots, 3) = node, state, child (0 = free); visits (nodes, 2) = times entered, times left by a state;
     state = [states seen, nodes, node now]. With A states seen, a child entered c times of the n times the node
     was left has mass (c (A - 1) + 1) / (n (A - 1) + A). Returns the row where the tree must grow first, or n;
-    with `full`, no phrase is added any more.
+    with `full`, no phrase is added any more; `frozen`: predict and move on only.
     """
     n: cython.Py_ssize_t = codes.shape[0]
     done: cython.Py_ssize_t = start
@@ -274,13 +281,17 @@ def parse(
             if code < 0:
                 done = t + 1
                 continue
-            if state[1] >= room and not full:
+            if state[1] >= room and not full and not frozen:
                 break
             slot = _child(edges, node, code, shift)
             child = edges[slot, 2]
             if code < state[0]:
                 bits[t] = -log2(_phrase_mass(edges, visits, node, code, state[0], shift))
-            else:
+            done = t + 1
+            if frozen:
+                state[2] = child
+                continue
+            if code >= state[0]:
                 state[0] = code + 1
             visits[node, 1] += 1
             if child:
@@ -294,5 +305,4 @@ def parse(
                     edges[slot, 2] = state[1]
                     visits[state[1], 0] = 1
                     state[1] += 1
-            done = t + 1
     return done

@@ -67,12 +67,13 @@ def update(
 ) -> None:
     """Mix a chunk of losses and learn the weights from it.
 
-    losses (n, models): bits, NaN where a model sleeps: it then counts as predicting what the awake ones do, so
-    its weight stands still (Freund, Schapire, Singer & Warmuth 1997).
-    behind (models,): minus log2 of the weights of static Bayes; shares (rates, models): weights under fixed
-    share, which after each row hands `rate` (the first `kinds` of `rates`) of all weight back to `prior` (Herbster & Warmuth 1998); camps
-    (1 + rates,): minus log2 of the weights of static Bayes, first, and of each rate. chance (models,) is
-    workspace. Writes bits (n,), the loss of the mixture, and before[want[t]], the weights before row t.
+    losses (n, models): bits, NaN where a model sleeps: it then counts as predicting what the awake ones do,
+    so its weight stands still (Freund, Schapire, Singer & Warmuth 1997).
+    behind (models,): minus log2 of the weights of static Bayes. shares (rates, models): weights under fixed
+    share, which after each row hands `rate` (the first `kinds` of `rates`) of all weight back to `prior`
+    (Herbster & Warmuth 1998). camps (1 + rates,): minus log2 of the weights of static Bayes, first, and of each
+    rate. chance (models,) is workspace.
+    Writes bits (n,), the loss of the mixture, and before[want[t]], the weights before row t.
     """
     models: cython.Py_ssize_t = losses.shape[1]
     t: cython.Py_ssize_t

@@ -5,8 +5,7 @@ from __future__ import annotations
 import itertools
 import os
 import threading
-from collections.abc import Sequence
-from typing import Any
+from collections.abc import Callable, Sequence
 
 import numpy as np
 import numpy.typing as npt
@@ -40,7 +39,7 @@ class Mixture(Kept):
     ) -> None:
         names = None if models is None else [model for model in models if isinstance(model, str)]
         given = [model for model in models or () if not isinstance(model, str)]
-        self.models: list[Model] = given or list(registry.make(kind, timed, names))
+        self.models: list[Model] = [*given] if given else [*registry.make(kind, timed, names)]
         self.weights = Weights([model.prior_cost for model in self.models], rates)
         self.seen = 256 if kind == "bytes" else 0
         self.rows = 0
@@ -55,27 +54,30 @@ class Mixture(Kept):
     def names(self) -> list[str]:
         return [model.name for model in self.models]
 
-    def absorb(self, rows: Rows | npt.ArrayLike, ask: Ask | None = None) -> Floats:
+    def absorb(self, rows: Rows | npt.ArrayLike, ask: Ask | None = None, frozen: bool = False) -> Floats:
         """Predict and learn rows (Rows, or codes (n,)): loss of each in bits, (n,), from weights and laws before it.
 
-        `ask` names rows whose whole law is wanted. Any chunking gives the same losses.
+        `ask` names rows whose whole law is wanted; `frozen` follows the rows and learns nothing from them.
+        Any chunking gives the same losses.
         """
         if not isinstance(rows, Rows):
             rows = Rows(np.asarray(rows, dtype=np.int32), None, self.rows)
         if ask is None and len(rows) > CHUNK:
-            return np.concatenate([self.absorb(rows[at : at + CHUNK]) for at in range(0, len(rows), CHUNK)])
+            starts = range(0, len(rows), CHUNK)
+            return np.concatenate([self.absorb(rows[at : at + CHUNK], frozen=frozen) for at in starts])
         if not len(rows):
             return np.zeros(0)
-        self.seen = max(self.seen, int(rows.codes.max()) + 1)
+        if not frozen:
+            self._admit(rows.codes)
         asks = [None if ask is None else ask.again() for _ in self.models]
         losses = np.empty((len(rows), len(self.models)))
 
         def one(i: int) -> None:
-            losses[:, i] = self.models[i].absorb(rows, asks[i])
+            losses[:, i] = self.models[i].absorb(rows, asks[i], frozen)
 
         _share_out(one, len(self.models), len(rows))
         want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
-        bits, before = self.weights.mix(losses, want)
+        bits, before = self.weights.mix(losses, want, frozen)
         bits[rows.codes < 0] = 0.0
         if ask is not None:
             ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
@@ -85,6 +87,13 @@ class Mixture(Kept):
         self.model_bits += np.where(asleep, bits[:, None], losses).sum(axis=0)
         self.awake += (~asleep).sum(axis=0)
         return bits
+
+    def _admit(self, codes: npt.NDArray[np.int32]) -> None:
+        """Note the states of a chunk; the models rely on new ones being numbered as they come."""
+        top = np.maximum.accumulate(np.maximum(codes, self.seen - 1))
+        if top[0] > self.seen or (np.diff(top) > 1).any():
+            raise ValueError("codes must number the states in order of first appearance")
+        self.seen = int(top[-1]) + 1
 
     def predict(self, time: int | None = None) -> StatesLaw:
         """Law of the next row, at `time` (microseconds) where the log has times."""
@@ -130,12 +139,8 @@ class Mixture(Kept):
         """Leading setting of each model."""
         return {model.name: model.setting() for model in self.models}
 
-    def state(self) -> dict[str, Any]:
-        """Everything learned: flat, numpy arrays and plain scalars."""
-        return super().state()
 
-
-def _share_out(work: Any, jobs: int, rows: int) -> None:
+def _share_out(work: Callable[[int], None], jobs: int, rows: int) -> None:
     """Run work(0..jobs-1), on all cores when there is enough of it. Raises what the first failing job raised."""
     workers = min(len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1, jobs)
     if workers < 2 or rows < _WORTH_THREADS:

@@ -11,6 +11,7 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.kernels import view
 from seqmix.kernels import weights as kernel
 from seqmix.models.keep import Kept
 
@@ -36,8 +37,10 @@ class Weights(Kept):
         halves = [1.0] + [1.0 + np.log2(len(rates))] * len(rates) if rates else [0.0]
         self.camps: Floats = np.array(halves, dtype=np.float64)
 
-    def mix(self, losses: Floats, want: npt.NDArray[np.int32]) -> tuple[Floats, Floats]:
-        """Learn losses (n, models) in bits, NaN = asleep.
+    def mix(
+        self, losses: Floats, want: npt.NDArray[np.int32], frozen: bool = False
+    ) -> tuple[Floats, Floats]:
+        """Learn losses (n, models) in bits, NaN = asleep; `frozen` leaves the weights as they are.
 
         Returns the loss of the mixture (n,) and the weights before the rows with want[t] >= 0, (asked, models).
         """
@@ -46,8 +49,13 @@ class Weights(Kept):
         if models == 1:
             before[:] = 1.0
             return np.nan_to_num(losses[:, 0], nan=0.0), before
+        if frozen:
+            before[:] = self.now()
+            best = np.fmin.reduce(losses, axis=1)
+            awake = np.where(np.isnan(losses), 0.0, before[0])
+            masses = np.exp2(best[:, None] - np.nan_to_num(losses, nan=np.inf))
+            return best - np.log2((awake * masses).sum(axis=1) / awake.sum(axis=1)), before
         bits = np.empty(rows)
-        view = memoryview
         # a memoryview cannot have zero rows: without rates, pass one line that no rate reads
         shares = self.shares if len(self._rates) else np.zeros((1, models))
         kernel.update(

@@ -7,7 +7,7 @@ import numpy.typing as npt
 
 from seqmix.models.context import ContextTree
 from seqmix.models.history import History, Keys, Past
-from seqmix.models.protocol import StatesModel
+from seqmix.models.protocol import Setting, StatesModel
 
 MINUTE = 60_000_000  # microseconds
 HOUR = 60 * MINUTE
@@ -45,8 +45,8 @@ class Clock(StatesModel):
     source = "Krichevsky & Trofimov 1981, in phases of the clock, weighed as a context tree"
     needs_times = True
 
-    def __init__(self, alphabet: int = 0) -> None:
-        settings = [
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        settings: list[Setting] = [
             ContextTree(label, contexts, alphabet=alphabet, alpha=1 / 10, most=18)
             for label, contexts in (
                 ("time of day", _day),
@@ -55,4 +55,4 @@ class Clock(StatesModel):
                 ("last state, minute of hour", _last_and_hour),
             )
         ]
-        super().__init__(settings, History(1), alphabet)
+        return settings, History(1)

@@ -8,6 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.kernels import contexts as kernel
+from seqmix.kernels import view
 from seqmix.models.digits import BYTES, SIDES, STATES, Digits
 from seqmix.models.history import Codes, Fork, Keys, Past
 from seqmix.models.keep import Kept
@@ -53,7 +54,6 @@ class Table(Kept):
 
     def run(self, call: Callable[..., int], rows: int, *middle: object) -> None:
         """Run a kernel over `rows` rows; it stops wherever the table must grow first."""
-        view = memoryview
         done = 0
         while done < rows:
             size = len(self.lines)
@@ -101,8 +101,10 @@ class ContextTree(Setting):
     def parts(self) -> dict[str, Kept]:
         return {"table": self._table}
 
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
-        return self._run(np.stack(list(self._contexts(past)), axis=1), codes, want, laws)
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
+        return self._run(np.stack(list(self._contexts(past)), axis=1), codes, want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         keys, which = np.unique(np.stack(list(self._contexts(fork)), axis=1), axis=0, return_inverse=True)
@@ -110,8 +112,15 @@ class ContextTree(Setting):
         self._run(keys, np.full(len(keys), ASK, dtype=np.int32), np.arange(len(keys), dtype=np.int32), laws)
         return laws[which.reshape(-1), :states]
 
-    def _run(self, keys: npt.NDArray[np.uint64], codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
-        table, view = self._table, memoryview
+    def _run(
+        self,
+        keys: npt.NDArray[np.uint64],
+        codes: Codes,
+        want: npt.NDArray[np.int32],
+        laws: Floats,
+        frozen: bool = False,
+    ) -> Floats:
+        table = self._table
         table.admit(codes)
         bits = np.empty(len(codes))
         keys = np.ascontiguousarray(keys)
@@ -121,7 +130,8 @@ class ContextTree(Setting):
         def call(start: int, lines: tuple[object, ...], size: tuple[object, ...], work: tuple[object, ...]) -> int:
             return kernel.tree(
                 start, view(codes), view(keys), *lines, *size, self._alpha, self._limit,
-                min(self._fresh, keys.shape[1]), *work, view(own), view(mass), view(want), view(laws), view(bits),
+                min(self._fresh, keys.shape[1]), frozen, *work, view(own), view(mass),
+                view(want), view(laws), view(bits),
             )  # fmt: skip
 
         table.run(call, len(codes))

@@ -7,7 +7,7 @@ import numpy.typing as npt
 
 from seqmix.models.context import ContextTree
 from seqmix.models.history import BEFORE_START, Codes, History, Keys, Past
-from seqmix.models.protocol import Floats, StatesModel
+from seqmix.models.protocol import Floats, Setting, StatesModel
 
 LONGEST = 2048  # rows of a period
 FIRST_LOOK = 64  # rows; then again whenever the log has doubled
@@ -45,8 +45,12 @@ class _Period(ContextTree):
             period, past.lag(self.period), past.lag(1), past.lag(self.period + 1), past.lag(max(self.period - 1, 1))
         )
 
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
         """Rows up to the next look at the period go through together, then the look is taken."""
+        if frozen:
+            return super().learn(past, codes, want, laws, frozen)
         bits = np.empty(len(codes))
         done = 0
         while done < len(codes):
@@ -68,9 +72,9 @@ class Cycle(StatesModel):
     summary = "what it was a period ago, the period found in the log"
     source = "Krichevsky & Trofimov 1981, at a lag, weighed as a context tree"
 
-    def __init__(self, alphabet: int = 0) -> None:
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         self._period = _Period(alphabet)
-        super().__init__([self._period], History(LONGEST + 1), alphabet)
+        return [self._period], History(LONGEST + 1)
 
     def setting(self) -> str:
         return f"period {self._period.period} rows" if self._period.period else "no period found"

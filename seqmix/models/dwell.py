@@ -6,7 +6,7 @@ import numpy as np
 
 from seqmix.models.context import ContextTree
 from seqmix.models.history import History, Keys, Past
-from seqmix.models.protocol import StatesModel
+from seqmix.models.protocol import Setting, StatesModel
 
 
 def stages(run: np.ndarray) -> np.ndarray:
@@ -31,9 +31,9 @@ class Dwell(StatesModel):
     summary = "how long the state has lasted, and the states before it"
     source = "renewal process (Cox 1962), weighed as a context tree"
 
-    def __init__(self, alphabet: int = 0) -> None:
-        settings = [
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        settings: list[Setting] = [
             ContextTree("duration first", _coarse_first, alphabet=alphabet, alpha=1 / 10, most=18),
             ContextTree("states before it first", _origin_first, alphabet=alphabet, alpha=1 / 10, most=18),
         ]
-        super().__init__(settings, History(1, runs=True), alphabet)
+        return settings, History(1, runs=True)

@@ -6,6 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.kernels import repeats as kernel
+from seqmix.kernels import view
 from seqmix.models.history import Codes, Fork, History, Past
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
@@ -23,14 +24,16 @@ class Phrases(Setting):
         self.visits = np.zeros((1 << 8, 2), dtype=np.int64)
         self.counters = np.array([alphabet, 1, 0], dtype=np.int64)  # states seen, nodes, node now
 
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
         bits = np.empty(len(codes))
-        view = memoryview
         done = 0
         while done < len(codes):
             done = kernel.parse(
                 done, view(codes), view(self.edges), view(self.visits), 65 - len(self.edges).bit_length(),
-                len(self.visits), len(self.visits) >= _MOST, view(self.counters), view(want), view(laws), view(bits),
+                len(self.visits), len(self.visits) >= _MOST, frozen, view(self.counters), view(want), view(laws),
+                view(bits),
             )  # fmt: skip
             if done < len(codes):
                 larger = np.zeros((2 * len(self.edges), 3), dtype=np.int64)
@@ -54,7 +57,6 @@ class Phrases(Setting):
 
     def _at(self, nodes: npt.NDArray[np.int64], codes: Codes, laws: Floats) -> npt.NDArray[np.int64]:
         """Laws at `nodes`, or the nodes that the codes lead to from there."""
-        view = memoryview
         kernel.step(
             view(nodes), view(codes), view(self.edges), view(self.visits), 65 - len(self.edges).bit_length(),
             int(self.counters[0]), view(laws),
@@ -68,5 +70,5 @@ class LZ78(StatesModel):
     summary = "incremental parsing into ever longer phrases"
     source = "Ziv & Lempel 1978; Langdon 1983; Feder, Merhav & Gutman 1992"
 
-    def __init__(self, alphabet: int = 0) -> None:
-        super().__init__([Phrases(alphabet)], History(1), alphabet)
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        return [Phrases(alphabet)], History(1)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from seqmix.models.context import ContextTree, Contexts
+from seqmix.models.context import Contexts, ContextTree
 from seqmix.models.history import History, Keys, Past
 from seqmix.models.protocol import Setting, StatesModel
 
@@ -22,10 +22,10 @@ class Markov(StatesModel):
     summary = "the last 1 to 4 states decide"
     source = "Krichevsky & Trofimov 1981"
 
-    def __init__(self, alphabet: int = 0) -> None:
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         settings: list[Setting] = [
             ContextTree(f"order {k}, prior count {text}", _last(k), alphabet=alphabet, alpha=alpha, most=18)
             for k in ORDERS
             for alpha, text in ((1 / 2, "1/2"), (1 / 16, "1/16"))
         ]
-        super().__init__(settings, History(max(ORDERS)), alphabet)
+        return settings, History(max(ORDERS))

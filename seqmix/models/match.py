@@ -6,6 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.kernels import repeats as kernel
+from seqmix.kernels import view
 from seqmix.models.history import Codes, Fork, History, Past, _ChunkPast
 from seqmix.models.keep import Kept
 from seqmix.models.protocol import Floats, Setting, StatesModel
@@ -26,14 +27,13 @@ class Follower(Kept):
         self.places = np.zeros(1 << 18, dtype=np.int64)
         self.counters = np.array([0, -1, 0, 0], dtype=np.int64)  # rows so far, pointer or -1, length, misses
 
-    def follow(self, past: _ChunkPast, codes: Codes) -> tuple[Codes, Codes]:
-        """Guess (n,), a state or -1, and trust (n,) for each row; learns the rows."""
+    def follow(self, past: _ChunkPast, codes: Codes, frozen: bool = False) -> tuple[Codes, Codes]:
+        """Guess (n,), a state or -1, and trust (n,) for each row; goes on along the rows."""
         guess, trust = np.empty(len(codes), dtype=np.int32), np.empty(len(codes), dtype=np.int32)
         after = past.after(self.least)
-        view = memoryview
         kernel.follow(
             view(codes), view(after), view(self.ring), view(self.places), 65 - len(self.places).bit_length(),
-            self.least, view(self.counters), view(guess), view(trust),
+            self.least, view(self.counters), frozen, view(guess), view(trust),
         )  # fmt: skip
         return guess, trust
 
@@ -76,9 +76,11 @@ class _Bet(Setting):
     def parts(self) -> dict[str, Kept]:
         return {"follower": self._follower}
 
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
         assert isinstance(past, _ChunkPast)
-        return self._bet(codes, *self._follower.follow(past, codes), want, laws)
+        return self._bet(codes, *self._follower.follow(past, codes, frozen), want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         laws = np.zeros((fork.size, max(states, 1)))
@@ -89,16 +91,21 @@ class _Bet(Setting):
         return laws[:, :states]
 
     def _bet(
-        self, codes: Codes, guess: Codes, trust: Codes, want: npt.NDArray[np.int32], laws: Floats
+        self,
+        codes: Codes,
+        guess: Codes,
+        trust: Codes,
+        want: npt.NDArray[np.int32],
+        laws: Floats,
+        frozen: bool = False,
     ) -> Floats:
         more = int(codes.max(initial=-1)) + 1 - len(self.counts)
         if more > 0:
             self.counts = np.concatenate([self.counts, np.zeros(max(more, len(self.counts)))])
         bits = np.empty(len(codes))
-        view = memoryview
         kernel.bet(
             view(codes), view(guess), view(trust), view(self.events), view(self.counts), view(self.counters),
-            view(want), view(laws), view(bits),
+            frozen, view(want), view(laws), view(bits),
         )  # fmt: skip
         return bits
 
@@ -115,6 +122,6 @@ class Match(StatesModel):
     summary = "goes on as the longest repeated past went on"
     source = "Ehrenfeucht & Mycielski 1992; Krichevsky & Trofimov 1981 for the trust"
 
-    def __init__(self, alphabet: int = 0) -> None:
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         lengths = (5, 8, 14) if alphabet else (3, 6, 14)
-        super().__init__([_Bet(least, alphabet) for least in lengths], History(max(lengths)), alphabet)
+        return [_Bet(least, alphabet) for least in lengths], History(max(lengths))

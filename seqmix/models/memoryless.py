@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from seqmix.models.context import ContextTree
 from seqmix.models.history import History, Keys, Past
-from seqmix.models.protocol import StatesModel
+from seqmix.models.protocol import Setting, StatesModel
 
 
 def _nothing(past: Past) -> list[Keys]:
@@ -17,10 +17,10 @@ class Memoryless(StatesModel):
     summary = "each state as often as so far, or as lately"
     source = "Krichevsky & Trofimov 1981"
 
-    def __init__(self, alphabet: int = 0) -> None:
-        settings = [
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        settings: list[Setting] = [
             ContextTree("all rows", _nothing, alphabet=alphabet, most=12),
             ContextTree("last few hundred rows", _nothing, alphabet=alphabet, limit=250, most=12),
             ContextTree("last few dozen rows", _nothing, alphabet=alphabet, limit=25, alpha=0.1, most=12),
         ]
-        super().__init__(settings, History(1), alphabet)
+        return settings, History(1)

@@ -30,13 +30,16 @@ class Novelty(Kept):
         return (self.singles + 0.5) / (self.rows + 1.0) if self.rows else 1.0
 
     def absorb(
-        self, codes: npt.NDArray[np.int32]
+        self, codes: npt.NDArray[np.int32], frozen: bool = False
     ) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
         """Loss in bits of "new" or "not new" for each row, and the chance of "new" before it; both (n,)."""
         n = len(codes)
         if self._fixed:
             return np.zeros(n), np.zeros(n)
         there = codes >= 0
+        if frozen:
+            known = np.isin(codes, np.flatnonzero(self.times_seen))
+            return self._losses(there & ~known, there, np.full(n, self.unseen()))
         states = len(self.times_seen)
         more = int(codes.max(initial=-1)) + 1 - states
         if more > 0:
@@ -54,6 +57,12 @@ class Novelty(Kept):
         chance = np.where(rows > 0, (singles + 0.5) / (rows + 1.0), 1.0)
         self.rows += int(there.sum())
         self.singles += int(change.sum())
+        return self._losses(new, there, chance)
+
+    @staticmethod
+    def _losses(
+        new: npt.NDArray[np.bool_], there: npt.NDArray[np.bool_], chance: npt.NDArray[np.float64]
+    ) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
         with np.errstate(divide="ignore"):
             loss = -np.log2(np.where(new, chance, 1.0 - chance))
         return np.where(there, loss + 0.0, 0.0), chance

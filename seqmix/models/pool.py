@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.kernels import contexts as kernel
+from seqmix.kernels import view
 from seqmix.models.clock import DAY, MINUTE, phase
 from seqmix.models.context import ASK, Contexts, Table
 from seqmix.models.dwell import stages
@@ -55,10 +56,12 @@ class _Pool(Setting):
     def parts(self) -> dict[str, Kept]:
         return {"table": self._table, "follower": self._follower}
 
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
         assert isinstance(past, _ChunkPast)
-        guess, trust = self._follower.follow(past, codes)
-        return self._run(np.stack(list(self._contexts(past)), axis=1), guess, trust, codes, want, laws)
+        guess, trust = self._follower.follow(past, codes, frozen)
+        return self._run(np.stack(list(self._contexts(past)), axis=1), guess, trust, codes, want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         guess, trust = self._follower.guesses(fork, place)
@@ -79,8 +82,9 @@ class _Pool(Setting):
         codes: Codes,
         want: npt.NDArray[np.int32],
         laws: Floats,
+        frozen: bool = False,
     ) -> Floats:
-        table, view = self._table, memoryview
+        table = self._table
         table.admit(codes)
         bits = np.empty(len(codes))
         keys = np.ascontiguousarray(keys)
@@ -92,7 +96,7 @@ class _Pool(Setting):
         def call(start: int, lines: tuple[object, ...], size: tuple[object, ...], work: tuple[object, ...]) -> int:
             return kernel.pool(
                 start, view(codes), view(keys), view(guess), view(trust), *lines, view(self.by_seen),
-                view(self.by_node), view(self.by_trust), view(self.curves), *size, 1 / 250, 0.0015, *work,
+                view(self.by_node), view(self.by_trust), view(self.curves), *size, 1 / 250, 0.0015, frozen, *work,
                 view(nodes), view(seen), view(odds), view(heap), view(mass), view(want), view(laws), view(bits),
             )  # fmt: skip
 
@@ -112,10 +116,10 @@ class Pool(StatesModel):
     summary = "log-odds of many contexts and the longest match, added up with learned weights"
     source = "Genest & Zidek 1986; Zinkevich 2003; Mattern 2012"
 
-    def __init__(self, alphabet: int = 0) -> None:
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         if alphabet:
             setting = _Pool(_of_bytes, 10, 6, alphabet, 21)
-            super().__init__([setting], History(8, words=True), alphabet)
+            return [setting], History(8, words=True)
         else:
             setting = _Pool(_of_states, 10, 6, alphabet, 20)
-            super().__init__([setting], History(6, runs=True), alphabet)
+            return [setting], History(6, runs=True)

@@ -9,7 +9,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any, ClassVar, Protocol, runtime_checkable
+from typing import Any, Protocol, runtime_checkable
 
 import numpy as np
 import numpy.typing as npt
@@ -75,8 +75,11 @@ class Model(Protocol):
     kinds: tuple[str, ...]
     prior_cost: float  # bits
 
-    def absorb(self, rows: Rows, ask: Ask | None = None) -> Floats:
-        """Loss of each row in bits, (n,), predicted before it is learned; fills `ask.laws`. NaN = asleep."""
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        """Loss of each row in bits, (n,), predicted before it is learned; fills `ask.laws`. NaN = asleep.
+
+        frozen: the rows are followed, nothing is learned from them.
+        """
 
     def predict(self, time: int | None = None) -> StatesLaw:
         """Law of the next row, at `time` (microseconds) where the log has times."""
@@ -107,7 +110,9 @@ class Setting(Kept, ABC):
     label: str
 
     @abstractmethod
-    def learn(self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats) -> Floats:
+    def learn(
+        self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
+    ) -> Floats:
         """Loss of each row in bits among the states seen, (n,); 0 for a new state and a missing row."""
 
     @abstractmethod
@@ -123,49 +128,52 @@ class Setting(Kept, ABC):
         return place
 
 
-class StatesModel(Kept):
+class StatesModel(Kept, ABC):
     """A bank of settings of one explanation of states or bytes. See `Model` for the abilities.
 
     Sampled and enumerated continuations are frozen at the present row: contexts move along a path, counts stay.
     """
 
-    name: ClassVar[str]
-    kinds: ClassVar[tuple[str, ...]] = ("states", "bytes")
-    prior_cost: ClassVar[float]
-    summary: ClassVar[str]
-    source: ClassVar[str]
-    needs_times: ClassVar[bool] = False
+    name: str
+    kinds: tuple[str, ...] = ("states", "bytes")
+    prior_cost: float  # bits
+    summary: str  # one line
+    source: str  # the paper
+    needs_times: bool = False
 
     kept = ("seen",)
 
-    def __init__(self, settings: Sequence[Setting], history: History, alphabet: int = 0) -> None:
+    def __init__(self, alphabet: int = 0) -> None:
         """`alphabet`: the number of states where it is known beforehand (256 for bytes), 0 where it grows."""
-        self.settings = list(settings)
         self.seen = alphabet
-        self._alphabet = alphabet
-        self._history = history
+        self.settings, self._history = self.bank(alphabet)
         self._novelty = Novelty(alphabet)
         self._weights = Weights(np.zeros(len(self.settings)), rates=(0.005,))
+
+    @abstractmethod
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        """The settings of this explanation, and the history that they look at."""
 
     def parts(self) -> dict[str, Kept]:
         own: dict[str, Kept] = {"history": self._history, "novelty": self._novelty, "weights": self._weights}
         return own | {f"setting{i}": setting for i, setting in enumerate(self.settings)}
 
-    def absorb(self, rows: Rows, ask: Ask | None = None) -> Floats:
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         if not len(rows):
             return np.zeros(0)
         codes = rows.codes
-        self.seen = max(self.seen, int(codes.max()) + 1)
+        if not frozen:
+            self.seen = max(self.seen, int(codes.max()) + 1)
         asked = ask or Ask(np.full(len(rows), -1, dtype=np.int32), 0)
         past = self._history.ahead(codes, rows.times)
         losses = np.empty((len(rows), len(self.settings)))
         laws = []
         for i, setting in enumerate(self.settings):
             laws.append(asked.again().laws)
-            losses[:, i] = setting.learn(past, codes, asked.want, laws[i])
+            losses[:, i] = setting.learn(past, codes, asked.want, laws[i], frozen)
         past.close()
-        bits, weights = self._weights.mix(losses, asked.want)
-        novel, unseen = self._novelty.absorb(codes)
+        bits, weights = self._weights.mix(losses, asked.want, frozen)
+        novel, unseen = self._novelty.absorb(codes, frozen)
         if ask is not None:
             ask.laws[:] = np.einsum("mi,imk->mk", weights, np.stack(laws))
             ask.laws *= (1.0 - unseen[ask.at])[:, None]
@@ -173,17 +181,11 @@ class StatesModel(Kept):
         return np.where(codes < 0, 0.0, bits + novel)
 
     def predict(self, time: int | None = None) -> StatesLaw:
-        laws = self._walk_laws(np.array(self._weights.now()), 1, time)
-        return StatesLaw(laws[0, :-1], float(laws[0, -1]))
-
-    def _walk_laws(self, weights: Floats, paths: int, time: int | None) -> Floats:
-        fork = self._history.fork(paths, time)
-        laws = sum(
-            weight * self._whole(setting, fork, setting.start(paths))
-            for weight, setting in zip(weights, self.settings, strict=True)
-        )
-        assert isinstance(laws, np.ndarray)
-        return laws
+        fork = self._history.fork(1, time)
+        law = np.zeros(self.seen + 1)
+        for weight, setting in zip(self._weights.now(), self.settings, strict=True):
+            law += weight * self._whole(setting, fork, setting.start(1))[0]
+        return StatesLaw(law[:-1], float(law[-1]))
 
     def _whole(self, setting: Setting, fork: Fork, place: npt.NDArray[np.int64]) -> Floats:
         """Laws of one setting after each path with the unseen mass: (paths, states + 1)."""
@@ -196,7 +198,7 @@ class StatesModel(Kept):
     def sample(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
     ) -> Codes:
-        when = list(times) if times is not None else [None] * steps
+        when: list[int | None] = [None] * steps if times is None else list(times)
         out = np.empty((0, steps), dtype=np.int32)
         for setting, share in zip(self.settings, split(self._weights.now(), paths, rng), strict=True):
             if share:
@@ -212,7 +214,7 @@ class StatesModel(Kept):
     def walk(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
     ) -> Walk:
-        when = list(times) if times is not None else [None] * steps
+        when: list[int | None] = [None] * steps if times is None else list(times)
         laws = np.zeros((steps, self.seen + 1))
         exact = steps
         weights = self._weights.now()

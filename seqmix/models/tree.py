@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from seqmix.models.context import ContextTree
 from seqmix.models.history import History, Keys, Past
-from seqmix.models.protocol import StatesModel
+from seqmix.models.protocol import Setting, StatesModel
 
 DEPTH = 16
 
@@ -19,10 +19,10 @@ class Tree(StatesModel):
     summary = f"all context trees down to {DEPTH} rows back, weighed"
     source = "Willems, Shtarkov & Tjalkens 1995; Tjalkens, Willems & Shtarkov 1994"
 
-    def __init__(self, alphabet: int = 0) -> None:
-        settings = [
+    def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        settings: list[Setting] = [
             ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2),
             ContextTree("prior count 1/10", _orders, alphabet=alphabet, alpha=1 / 10),
             ContextTree("prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=120),
         ]
-        super().__init__(settings, History(DEPTH), alphabet)
+        return settings, History(DEPTH)

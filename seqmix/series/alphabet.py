@@ -27,7 +27,7 @@ class Alphabet:
     @classmethod
     def for_bytes(cls) -> Alphabet:
         """The 256 bytes: printable ASCII as it is; backslash and the others as escapes (`\\n`, `\\x00`)."""
-        return cls((repr(b'"' + bytes([byte]))[3:-1] for byte in range(256)), fixed=True)
+        return cls((repr(bytes([byte]))[2:-1] for byte in range(256)), fixed=True)
 
     def __len__(self) -> int:
         return len(self.labels)

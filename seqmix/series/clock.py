@@ -16,6 +16,8 @@ _TIME = re.compile(
 )
 _LONGEST = len("2000-01-01T00:00:00.123456789+00:00")
 _NO_TIME = "not a time in ISO 8601, like 2000-01-31T23:59:00"
+_NO_OFFSET = "a time without an offset, while the first has one"
+_OFFSET_TOO_MANY = "a time with an offset, while the first has none"
 
 _SECOND = 1_000_000
 _MINUTE = 60 * _SECOND
@@ -102,7 +104,7 @@ class Clock:
                 problems[int(alike[0])] = _NO_TIME
                 break
             if (shape["offset"] is None) == bool(self.offset):
-                problems[int(alike[0])] = f"a time with{'out' * bool(self.offset)} an offset, unlike the first"
+                problems[int(alike[0])] = _NO_OFFSET if self.offset else _OFFSET_TOO_MANY
                 break
             times[alike], right = _read(shape, digits[alike])
             if not right.all():

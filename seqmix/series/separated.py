@@ -102,7 +102,7 @@ class Separated:
 
 def _sample_rows(start: str, separator: str, whole: bool) -> list[list[str]]:
     """The rows, whatever is wrong with them, without blank lines and without a last one that may be cut."""
-    rows = list(_csv_reader(io.StringIO(start.replace("\r", "")), separator, strict=False))
+    rows = list(_csv_reader(io.StringIO(start.replace("\r", "").rstrip("\n")), separator, strict=False))
     return [row for row in (rows if whole else rows[:-1]) if not _is_blank(row)]
 
 

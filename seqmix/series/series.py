@@ -17,7 +17,7 @@ from .facts import Facts
 from .gaps import GapFiller, find_cadence
 from .kinds import KINDS, NO_NUMBERS, NumberText, are_numbers
 from .opening import open_log
-from .rows import CHUNK, Rows, cut, join
+from .rows import CHUNK, MISSING, Rows, cut, join
 from .source import LogFile
 from .values import byte_codes, cell_text, times_of
 
@@ -69,10 +69,20 @@ class Series(Facts):
         return cut([(self.codes, self.times)] if len(self) else [], self.first)
 
     def slice(self, start: int, stop: int | None = None) -> Series:
-        """The rows from `start` up to, not including, `stop`, as a Python slice counts; nothing is copied."""
+        """The rows from `start` up to, not including, `stop`, as a Python slice counts.
+
+        A log of its own: its states are numbered afresh, in the order in which they first appear in it.
+        """
         first = slice(start, stop).indices(len(self))[0]
         times = None if self.times is None else self.times[start:stop]
-        return replace(self, codes=self.codes[start:stop], times=times, first=self.first + first)
+        codes, alphabet = self.codes[start:stop], self.alphabet
+        if not alphabet.fixed:
+            known, rows = np.unique(codes[codes >= 0], return_index=True)
+            known = known[np.argsort(rows)]
+            number = np.full(len(alphabet) + 1, MISSING, dtype=np.int32)  # the last is for missing rows
+            number[known] = np.arange(len(known))
+            codes, alphabet = number[codes], Alphabet(alphabet.labels[code] for code in known)
+        return replace(self, codes=codes, alphabet=alphabet, times=times, first=self.first + first)
 
     def _set_times(self, times: np.ndarray, clock: Clock) -> None:
         if len(times) != len(self.codes):

@@ -24,9 +24,7 @@ class Ended:
     err: str
 
 
-def process(
-    *arguments: str | Path, command: Sequence[str] = COMMAND, **settings: object
-) -> subprocess.Popen[bytes]:
+def process(*arguments: str | Path, command: Sequence[str] = COMMAND, **settings: object) -> subprocess.Popen[bytes]:
     """The command as a process of its own, its streams as pipes unless said otherwise."""
     streams = {name: subprocess.PIPE for name in ("stdin", "stdout", "stderr")}
     environment = {**os.environ, "PYTHONPATH": str(Path(seqmix.__file__).parents[1])}

@@ -93,7 +93,9 @@ def test_forecast_masses_add_to_one(run, line):
 
 def test_forecast_jsonl_and_csv_tell_the_same(run, line):
     rows = iter(table_of(run("forecast", line).out))
-    for text in run("forecast", line, "--format", "jsonl").out.splitlines():
+    texts = run("forecast", line, "--format", "jsonl").out.splitlines()
+    assert len(texts) == 5
+    for text in texts:
         record = json.loads(text)
         for state, probability in [*record["probabilities"].items(), ("", record["unseen"])]:
             row = next(rows)
@@ -117,8 +119,7 @@ def test_paths_are_joint_continuations(run, line):
         (str(path), str(step)) for path in (1, 2, 3) for step in (1, 2, 3, 4)
     ]
     records = [
-        json.loads(text)
-        for text in run("forecast", line, "--paths=3", "--steps=4", "--format=jsonl").out.splitlines()
+        json.loads(text) for text in run("forecast", line, "--paths=3", "--steps=4", "--format=jsonl").out.splitlines()
     ]
     assert [record["path"] for record in records] == [1, 2, 3]
     assert [state for record in records for state in record["states"]] == [row["state"] for row in rows]
@@ -194,9 +195,7 @@ def test_describe_counts_states(run, line):
 def test_models_named_are_the_models_mixed(run, line):
     names = [row["name"] for row in table_of(run("models").out)]
     assert len(names) == len(set(names))
-    record = json.loads(
-        run("forecast", line, "--models", ",".join(names[:2]), "--steps", "1", "--format", "jsonl").out
-    )
+    record = json.loads(run("forecast", line, "--models", ",".join(names[:2]), "--steps", "1", "--format", "jsonl").out)
     assert set(record["weights"]) == set(names[:2])
 
 
@@ -215,9 +214,7 @@ def test_options_of_one_command_come_from_its_variable(run, line):
     assert run("forecast", line, SEQMIX_FORECAST_STEPS="2") == run("forecast", line, "--steps", "2")
     assert run("forecast", line, SEQMIX_STEPS="2") == run("forecast", line)
     assert run("forecast", line, SEQMIX_AS="bytes") == run("forecast", line, "--as", "bytes")
-    assert run("score", line, SEQMIX_SCORE_FROM="2026-01-05T07:00") == run(
-        "score", line, "--from", "2026-01-05T07:00"
-    )
+    assert run("score", line, SEQMIX_SCORE_FROM="2026-01-05T07:00") == run("score", line, "--from", "2026-01-05T07:00")
     assert run("describe", line, SEQMIX_DESCRIBE_QUIET="1").err == ""
 
 
@@ -227,7 +224,9 @@ def test_file_dash_and_pipe_give_the_same(run, line, name):
         return ended.code, ended.out.replace(str(line), "<stdin>").replace(line.name, "<stdin>")
 
     rows = line.read_bytes()
-    assert shown(run(*on(name, line))) == shown(run(name, "-", stdin=rows)) == shown(run(name, stdin=rows))
+    expected = shown(run(*on(name, line)))
+    assert expected[0] == 0
+    assert shown(run(name, "-", stdin=rows)) == shown(run(name, stdin=rows)) == expected
 
 
 def test_a_file_named_like_an_option(run, line, tmp_path, monkeypatch):

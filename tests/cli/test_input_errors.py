@@ -1,4 +1,4 @@
-"""Logs that cannot be read: exit 1, or 2 where an option is wrong, one line that says what to do, no answer."""
+"""Logs that cannot be read: exit 1 (2 for a wrong option), one line that says what to do, no answer."""
 
 from __future__ import annotations
 

@@ -24,9 +24,7 @@ def finish(child: subprocess.Popen[bytes], stdin: bytes | None = None) -> tuple[
     return child.returncode, (out or b"").decode(), (err or b"").decode()
 
 
-@pytest.mark.parametrize(
-    "arguments", [["--help"], ["score", "--last", "all", "--per-row", "--models", "memoryless"]]
-)
+@pytest.mark.parametrize("arguments", [["--help"], ["score", "--last", "all", "--per-row", "--models", "memoryless"]])
 def test_a_reader_that_goes_away_ends_it_quietly(arguments, tmp_path):
     log = tmp_path / "log.txt"
     log.write_bytes(ROWS)

@@ -62,9 +62,7 @@ def test_json_has_no_nan_or_infinity():
 def test_the_look_of_a_table():
     file = io.BytesIO()
     writer = Writer(file, "x", "table")
-    writer.table(
-        [("step", ">"), ("state", "<"), ("share", ">")], [("1", "洗浄", "7.5%"), ("10", "x" * 50, "92.5%")]
-    )
+    writer.table([("step", ">"), ("state", "<"), ("share", ">")], [("1", "洗浄", "7.5%"), ("10", "x" * 50, "92.5%")])
     writer.fields({"rows": "12", "best model": "trees"})
     writer.lines(["said"])
     assert file.getvalue().decode() == (
@@ -146,9 +144,7 @@ def test_a_failure_leaves_the_old_file_and_nothing_else(tmp_path, error):
     assert os.listdir(tmp_path) == ["answer.csv"]
 
 
-@pytest.mark.parametrize(
-    ("path", "reason"), [("nowhere/x.csv", "No such file or directory"), (".", "Is a directory")]
-)
+@pytest.mark.parametrize(("path", "reason"), [("nowhere/x.csv", "No such file or directory"), (".", "Is a directory")])
 def test_a_place_that_cannot_be_written_is_named(tmp_path, monkeypatch, path, reason):
     monkeypatch.chdir(tmp_path)
     with pytest.raises(OutputError, match=f"^cannot write {path}: {reason}$"), writing(path, None):

@@ -129,3 +129,19 @@ class TestEveryModel:
         for step in range(3):
             shares = np.bincount(paths[:, step], minlength=walk.laws.shape[1]) / len(paths)
             assert np.abs(shares - walk.laws[step]).max() < 0.05
+
+    def test_frozen_rows_are_followed_but_teach_nothing(self, kind: str, model: type[StatesModel]) -> None:
+        rows = log(kind, 900)
+        one = make(kind, model)
+        one.absorb(rows[:600])
+        for t in range(600, 640):
+            law = one.predict(None if rows.times is None else int(rows.times[t]))
+            code = int(rows.codes[t])
+            before = one.state()
+            bits = one.absorb(rows[t : t + 1], frozen=True)[0]
+            mass = 1.0 if code < 0 else law.masses[code] if code < len(law.masses) else law.unseen
+            assert abs(bits + np.log2(mass)) < 1e-9
+            learned = {"lines", "by_seen", "by_node", "by_trust", "curves", "events", "counts", "edges", "visits",
+                       "places", "singles", "times_seen", "behind", "shares", "period"}  # fmt: skip
+            after = one.state()
+            assert all(np.array_equal(after[k], before[k]) for k in before if k.split(".")[-1] in learned)

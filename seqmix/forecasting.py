@@ -1,0 +1,127 @@
+"""Forecast: the law of each of the next rows, with the weight of every model."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from seqmix.errors import OptionError
+from seqmix.inputs import opened
+from seqmix.mixture.mixture import Mixture
+from seqmix.models.protocol import Model
+from seqmix.series import Log, Series
+
+UNSEEN = "?"
+"""Stands for a state never seen, in joint continuations."""
+
+
+@dataclass(frozen=True)
+class Step:
+    """The law of one row ahead.
+
+    probabilities: of every state seen so far, the most probable first; with `unseen` they add to 1.
+    top: the most probable state; None before the first row. entropy_bits: of the law, in bits.
+    """
+
+    step: int
+    time: str | None
+    probabilities: dict[str, float]
+    unseen: float
+    top: str | None
+    entropy_bits: float
+
+
+@dataclass(frozen=True)
+class Forecast:
+    """What comes next.
+
+    steps: one `Step` a row ahead. weights: posterior probability of each model, largest first; they add to 1.
+    settings: leading setting of each model. exact: so many steps are exact, later ones rest on sample paths.
+    rows: rows read. paths: joint continuations when asked for, else None.
+    """
+
+    steps: list[Step]
+    weights: dict[str, float]
+    settings: dict[str, str]
+    exact: int
+    rows: int
+    paths: list[list[str]] | None
+
+    def records(self) -> Iterator[dict[str, Any]]:
+        """One JSON-ready object a step."""
+        for step in self.steps:
+            yield {
+                "step": step.step,
+                "time": step.time,
+                "probabilities": step.probabilities,
+                "unseen": step.unseen,
+                "top": step.top,
+                "entropy_bits": step.entropy_bits,
+                "weights": self.weights,
+            }
+
+
+def forecast(
+    log: Any,
+    steps: int = 5,
+    *,
+    models: Sequence[str] | Sequence[Model] | None = None,
+    seed: int = 0,
+    paths: int | None = None,
+    **reading: Any,
+) -> Forecast:
+    """The law of each of the next `steps` rows of a log of states or bytes.
+
+    log: a path, an open file, a Log, a Series, or values (strings, bytes, ...); reading: column, time, kind,
+    header, as for `seqmix.read`. models: names or objects, None for all that fit. seed: of the sample paths.
+    paths: return so many joint continuations too. Raises OptionError or DataError.
+    """
+    if steps < 1 or (paths is not None and paths < 1):
+        raise OptionError("a forecast takes at least one step, and one path")
+    with opened(log, **reading) as source:
+        mixture: Mixture | None = None
+        last: int | None = None
+        for rows in source.chunks():
+            if mixture is None:
+                mixture = Mixture(models, kind=source.kind, timed=rows.times is not None)
+            mixture.absorb(rows)
+            last = None if rows.times is None else int(rows.times[-1])
+        if mixture is None:
+            mixture = Mixture(models, kind=source.kind)
+        # without a cadence, the clock models take the rows ahead to come at the time of the last one
+        ahead = None if last is None else [last + (source.cadence or 0) * (i + 1) for i in range(steps)]
+        rng = np.random.default_rng(seed)
+        labels = source.alphabet.labels
+        walk = mixture.walk(steps, rng, ahead)
+        drawn = None
+        if paths is not None:
+            codes = mixture.sample(steps, paths, rng, ahead)
+            drawn = [[labels[c] if c < mixture.seen else UNSEEN for c in path] for path in codes.tolist()]
+        times = _texts(source, ahead, steps)
+        weights = dict(zip(mixture.names, mixture.weights.now().tolist(), strict=True))
+        return Forecast(
+            steps=[_step(i + 1, times[i], walk.laws[i], labels) for i in range(steps)],
+            weights=dict(sorted(weights.items(), key=lambda item: -item[1])),
+            settings=mixture.settings(),
+            exact=walk.exact,
+            rows=mixture.rows,
+            paths=drawn,
+        )
+
+
+def _texts(source: Log | Series, ahead: list[int] | None, steps: int) -> list[str | None]:
+    if ahead is None or source.cadence is None:
+        return [None] * steps
+    return [source.clock.text(time) for time in ahead]
+
+
+def _step(number: int, time: str | None, law: np.ndarray, labels: Sequence[str]) -> Step:
+    order = np.argsort(-law[:-1], kind="stable")
+    probabilities = {labels[code]: float(law[code]) for code in order}
+    some = law[law > 0]
+    entropy = float(-(some * np.log2(some)).sum())
+    top = labels[order[0]] if len(order) else None
+    return Step(number, time, probabilities, float(law[-1]), top, max(entropy, 0.0))
