@@ -39,7 +39,7 @@ class Forecast:
     """What comes next.
 
     steps: one `Step` a row ahead. weights: posterior probability of each model, largest first; they add to 1.
-    settings: leading setting of each model. exact: so many steps are exact, later ones rest on sample paths.
+    settings: leading setting of each model. exact: so many steps follow every continuation, later ones the most of them.
     rows: rows read. paths: joint continuations when asked for, else None.
     """
 
@@ -76,8 +76,8 @@ def forecast(
     """The law of each of the next `steps` rows of a log of states or bytes.
 
     log: a path, an open file, a Log, a Series, or values (strings, bytes, ...); reading: column, time, kind,
-    header, as for `seqmix.read`. models: names or objects, None for all that fit. seed: of the sample paths.
-    paths: return so many joint continuations too. Raises OptionError or DataError.
+    header, as for `seqmix.read`. models: names or objects, None for all that fit. paths: return so many joint
+    continuations too, drawn with `seed`. Raises OptionError or DataError.
     """
     if steps < 1 or (paths is not None and paths < 1):
         raise OptionError("a forecast takes at least one step, and one path")
@@ -93,12 +93,11 @@ def forecast(
             mixture = Mixture(models, kind=source.kind)
         # without a cadence, the clock models take the rows ahead to come at the time of the last one
         ahead = None if last is None else [last + (source.cadence or 0) * (i + 1) for i in range(steps)]
-        rng = np.random.default_rng(seed)
         labels = source.alphabet.labels
-        walk = mixture.walk(steps, rng, ahead)
+        walk = mixture.walk(steps, ahead)
         drawn = None
         if paths is not None:
-            codes = mixture.sample(steps, paths, rng, ahead)
+            codes = mixture.sample(steps, paths, np.random.default_rng(seed), ahead)
             drawn = [[labels[c] if c < mixture.seen else UNSEEN for c in path] for path in codes.tolist()]
         times = _texts(source, ahead, steps)
         weights = dict(zip(mixture.names, mixture.weights.now().tolist(), strict=True))

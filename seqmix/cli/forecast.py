@@ -74,8 +74,8 @@ def _write_table(writer: Writer, forecast: Forecast) -> None:
         [(name, forecast.settings[name], percent(weight)) for name, weight in forecast.weights.items()],
     )
     exact = min(forecast.exact, len(forecast.steps))
-    law = "all steps exact" if exact == len(forecast.steps) else f"steps after step {exact} from sample paths"
-    writer.lines([f"{forecast.rows} rows read, {law}"])
+    law = "all steps are exact" if exact == len(forecast.steps) else f"steps after {exact} come from sample paths"
+    writer.lines([f"rows read: {forecast.rows}; {law}"])
 
 
 def _write_paths(writer: Writer, forecast: Forecast) -> None:

@@ -38,7 +38,7 @@ def command(answer: Answer) -> None:
                 writer.row(row)
         else:
             writer.table(
-                [("model", "<"), ("kinds", "<"), ("prior cost", ">"), ("what it does", "<")],
+                [("model", "<"), ("kinds", "<"), ("prior cost, bits", ">"), ("what it does", "<")],
                 [(name, kinds, bits(cost), summary) for name, kinds, cost, summary, _ in rows],
             )
             writer.lines(f"{name}: {source}" for name, _, _, _, source in rows)

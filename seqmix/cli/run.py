@@ -9,7 +9,9 @@ from __future__ import annotations
 import os
 import signal
 import sys
+from collections.abc import Callable
 from types import FrameType
+from typing import Any
 
 from seqmix.cli.notes import discard, say
 from seqmix.errors import SeqmixError
@@ -25,38 +27,42 @@ class Stopped(KeyboardInterrupt):
 
 def main() -> int:
     """Run `seqmix` on the arguments of the process; returns the exit code."""
-    for number in (signal.SIGINT, signal.SIGTERM):
-        if signal.getsignal(number) is not signal.SIG_IGN:  # nohup and `&` in a script stay in force
-            signal.signal(number, _stop)
+    _on_signals(_stop)
     try:
-        # Imported here, so that a signal during the import is met as well.
-        from seqmix.cli.group import run
+        try:
+            # Imported here, so that a signal during the import is met as well.
+            from seqmix.cli.group import run
 
-        return run(sys.argv[1:])
+            return run(sys.argv[1:])
+        finally:
+            _on_signals(signal.SIG_DFL)
     except BaseException as error:
         return _end(error)
 
 
+def _on_signals(handler: Callable[[int, FrameType | None], Any] | int) -> None:
+    for number in (signal.SIGINT, signal.SIGTERM):
+        if signal.getsignal(number) is not signal.SIG_IGN:  # nohup and `&` in a script stay in force
+            signal.signal(number, handler)
+
+
 def _stop(number: int, frame: FrameType | None) -> None:
-    signal.signal(number, signal.SIG_DFL)  # a second one ends the process on the spot
+    _on_signals(signal.SIG_DFL)  # a second one ends the process on the spot
     raise Stopped(number)
 
 
 def _end(error: BaseException) -> int:
     """Say what ended the command, if there is anything to say; the exit code."""
+    discard(sys.stdout)  # a reader that is gone, or does not read, must not hold up the end
     if isinstance(error, Stopped):
         say(f"stopped by {signal.Signals(error.number).name}")
         return 128 + error.number
     if isinstance(error, BrokenPipeError):
-        discard(sys.stdout)
         return 128 + signal.SIGPIPE
     if isinstance(error, SeqmixError):
-        if error.exit_code == os.EX_IOERR:
-            discard(sys.stdout)
         say(str(error))
         return error.exit_code
     if isinstance(error, OSError) and error.strerror:
-        discard(sys.stdout)
         say(": ".join(str(part) for part in (error.filename, error.strerror) if part))
         return 1
     if isinstance(error, MemoryError):

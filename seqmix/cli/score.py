@@ -123,18 +123,19 @@ def _write(writer: Writer, record: dict[str, Any]) -> None:
 
 
 def _write_table(writer: Writer, record: dict[str, Any]) -> None:
-    writer.fields({
-        "rows scored": str(record["rows"]),
-        "bits": bits(record["bits"]),
-        "bits a row": bits(record["bits_per_row"]),
-        "accuracy": percent(record["accuracy"]),
-        "Brier score": bits(record["brier"]),
-        "best model": record["best_model"],
-        "regret, bits": bits(record["regret_bits"]),
-        "bound, bits": bits(record["bound_bits"]),
-    })  # fmt: skip
+    fields: list[tuple[str, Callable[[Any], str], Any]] = [
+        ("rows scored", str, record["rows"]),
+        ("bits", bits, record["bits"]),
+        ("bits a row", bits, record["bits_per_row"]),
+        ("accuracy", percent, record["accuracy"]),
+        ("Brier score", bits, record["brier"]),
+        ("best model", str, record["best_model"]),
+        ("regret, bits", bits, record["regret_bits"]),
+        ("bound, bits", bits, record["bound_bits"]),
+    ]
+    writer.fields({name: show(value) for name, show, value in fields if value is not None})
     writer.table(
-        [("model", "<"), ("bits", ">"), ("bits a row", ">"), ("prior cost", ">"),
+        [("model", "<"), ("bits", ">"), ("bits a row", ">"), ("prior cost, bits", ">"),
          ("weight before", ">"), ("after", ">")],
         [
             (part["name"], bits(part["bits"]), bits(part["bits_per_row"]), bits(part["prior_cost_bits"]),
@@ -146,3 +147,5 @@ def _write_table(writer: Writer, record: dict[str, Any]) -> None:
         [("baseline", "<"), ("bits", ">"), ("bits a row", ">")],
         [(part["name"], bits(part["bits"]), bits(part["bits_per_row"])) for part in record["baselines"]],
     )
+    if record["law_rows"] < record["rows"]:
+        writer.lines([f"accuracy and Brier score rest on {record['law_rows']} of the rows"])

@@ -42,7 +42,7 @@ def _write(writer: Writer, weights: Weights) -> None:
     else:
         writer.table(
             [("model", "<"), ("leading setting", "<"), ("weight", ">"), ("bits", ">"), ("bits a row", ">"),
-             ("prior cost", ">")],
+             ("prior cost, bits", ">")],
             [
                 (part["name"], part["setting"], percent(part["weight"]), bits(part["bits"]),
                  bits(part["bits_per_row"]), bits(part["prior_cost_bits"]))

@@ -18,7 +18,7 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager, suppress
 from typing import BinaryIO, Literal
 
-from seqmix.errors import OutputError, visible
+from seqmix.errors import OutputError, SeqmixError, visible
 
 FORMATS = ("table", "csv", "jsonl")
 
@@ -82,15 +82,17 @@ class Writer:
         self._block("<>", fields.items())
 
     def lines(self, lines: Iterable[str]) -> None:
-        """A block of sentences."""
+        """A block of sentences, if there are any."""
         self._block("<", ([line] for line in lines), limit=1000)
 
     def _block(
-        self, sides: Sequence[str], rows: Iterable[Sequence[str]], head: Sequence[str] = (), limit: int = 40
+        self, sides: Sequence[str], rows: Iterable[Sequence[str]], head: Sequence[str] = (), limit: int = 80
     ) -> None:
         cells = [[visible(cell, limit) for cell in row] for row in rows]
         if head:
             cells.insert(0, list(head))
+        if not cells:
+            return
         widths = [max(map(_width, column)) for column in zip(*cells, strict=True)]
         if self._blocks:
             self.write("\n")
@@ -126,7 +128,11 @@ def writing(path: str | None, format: str | None) -> Iterator[Writer]:
         if sys.stdout is None:
             raise OutputError("cannot write stdout: it is closed")
         writer = Writer(sys.stdout.buffer, "stdout", format)
-        yield writer
+        try:
+            yield writer
+        except SeqmixError:
+            writer.flush()  # what was printed before the error ends with a whole line
+            raise
         writer.flush()
     else:
         with _opened(path, path, "wb") if _is_special(path) else _beside(path) as file:

@@ -11,7 +11,6 @@ import importlib.util
 import os
 import sys
 from collections.abc import Callable
-from pathlib import Path
 from types import ModuleType
 from typing import Any
 
@@ -26,7 +25,8 @@ _CHOICES = ("compiled", "interpreted")
 
 def _interpreted(name: str) -> ModuleType:
     """The kernel `name` from its source, even where a compiled one stands beside it."""
-    spec = importlib.util.spec_from_file_location(f"{__name__}.{name}", Path(__file__).with_name(f"{name}.py"))
+    source = os.path.join(os.path.dirname(__file__), f"{name}.py")
+    spec = importlib.util.spec_from_file_location(f"{__name__}.{name}", source)
     assert spec is not None and spec.loader is not None
     module = importlib.util.module_from_spec(spec)
     spec.loader.exec_module(module)

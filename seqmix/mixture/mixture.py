@@ -13,10 +13,10 @@ import numpy.typing as npt
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
 from seqmix.models.keep import Kept
-from seqmix.models.protocol import Ask, Floats, Model, StatesLaw, Walk, split
+from seqmix.models.protocol import Ask, Floats, Model, StatesLaw, Walk, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
-_WORTH_THREADS = 512  # rows; below, starting threads costs more than it saves
+_WORTH_THREADS = 2048  # rows; below, starting threads costs more than it saves
 
 
 class Mixture(Kept):
@@ -102,22 +102,17 @@ class Mixture(Kept):
         masses = np.einsum("i,ik->k", weights, np.stack([law.masses for law in laws]))
         return StatesLaw(masses, float(weights @ np.array([law.unseen for law in laws])))
 
-    def walk(
-        self, steps: int, rng: np.random.Generator, times: Sequence[int | None] | None = None, paths: int = 2000
-    ) -> Walk:
+    def walk(self, steps: int, times: Sequence[int | None] | None = None, paths: int = 2000) -> Walk:
         """Law of each of the next steps: exact for the first, and while at most `paths` continuations are there.
 
         A continuation belongs to one model, drawn by weight, which goes on alone along it: the joint law of a
-        Bayes mixture. Models with less than 1/10,000 of the weight are left out after the first step.
+        Bayes mixture. After the first step, the models that make up the last 0.1 % of the weight are left out.
         """
-        weights = self.weights.now()
         first = self.predict(None if times is None else times[0])
         laws = np.zeros((steps, len(first.masses) + 1))
-        lasting = np.flatnonzero(weights > 1e-4)
         exact = steps
-        for i in lasting if steps > 1 else []:
-            weight = weights[i] / weights[lasting].sum()
-            walk = self.models[i].walk(steps, max(int(paths * weight), 64), rng, times)
+        for i, weight in leading(self.weights.now()) if steps > 1 else []:
+            walk = self.models[i].walk(steps, max(int(paths * weight), 64), times)
             laws += weight * walk.laws
             exact = min(exact, walk.exact)
         laws[0, :-1], laws[0, -1] = first.masses, first.unseen

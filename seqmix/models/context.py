@@ -107,7 +107,9 @@ class ContextTree(Setting):
         return self._run(np.stack(list(self._contexts(past)), axis=1), codes, want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
-        keys, which = np.unique(np.stack(list(self._contexts(fork)), axis=1), axis=0, return_inverse=True)
+        contexts = self._contexts(fork)
+        _, first, which = np.unique(contexts[-1], return_index=True, return_inverse=True)  # the longest tells all
+        keys = np.stack([key[first] for key in contexts], axis=1)
         laws = np.zeros((len(keys), max(states, 1)))
         self._run(keys, np.full(len(keys), ASK, dtype=np.int32), np.arange(len(keys), dtype=np.int32), laws)
         return laws[which.reshape(-1), :states]

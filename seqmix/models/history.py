@@ -71,7 +71,7 @@ class Past:
         return keys
 
 
-class _ChunkPast(Past):
+class ChunkPast(Past):
     def __init__(self, history: History, codes: Codes, times: npt.NDArray[np.int64] | None) -> None:
         super().__init__(len(codes), times)
         self._history = history
@@ -240,9 +240,9 @@ class History(Kept):
         self.words = np.zeros(2, dtype=np.uint64)
         self.time: int | None = None
 
-    def ahead(self, codes: Codes, times: npt.NDArray[np.int64] | None) -> _ChunkPast:
+    def ahead(self, codes: Codes, times: npt.NDArray[np.int64] | None) -> ChunkPast:
         """The past of each of the next rows; call its `close` once they are learned."""
-        return _ChunkPast(self, codes, times)
+        return ChunkPast(self, codes, times)
 
     def fork(self, paths: int, time: int | None) -> Fork:
         """`paths` continuations whose first row is at `time`."""

@@ -7,35 +7,54 @@ import numpy.typing as npt
 
 from seqmix.kernels import repeats as kernel
 from seqmix.kernels import view
-from seqmix.models.history import Codes, Fork, History, Past, _ChunkPast
+from seqmix.models.history import Codes, Fork, History, Past, ChunkPast
 from seqmix.models.keep import Kept
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
 TRUSTS = 64  # 4 x min(length, 15) + min(wrong guesses lately, 3)
-_RING = 1 << 20  # rows remembered
+_FIRST, _MOST_ROWS, _MOST_PLACES = 1 << 10, 1 << 20, 1 << 18
 
 
 class Follower(Kept):
-    """The place in the past whose continuation is being followed (kernels/repeats_cy.py)."""
+    """The place in the past whose continuation is being followed (kernels/repeats_cy.py).
+
+    Remembers the last million rows, and where each of 262,144 hashes was seen last.
+    """
 
     kept = ("ring", "places", "counters")
 
     def __init__(self, least: int) -> None:
         """least: rows that must repeat before a match is followed."""
         self.least = least
-        self.ring = np.zeros(_RING, dtype=np.int32)
-        self.places = np.zeros(1 << 18, dtype=np.int64)
+        self.ring = np.zeros(_FIRST, dtype=np.int32)
+        self.places = np.zeros(_FIRST, dtype=np.int64)
         self.counters = np.array([0, -1, 0, 0], dtype=np.int64)  # rows so far, pointer or -1, length, misses
 
-    def follow(self, past: _ChunkPast, codes: Codes, frozen: bool = False) -> tuple[Codes, Codes]:
+    def follow(self, past: ChunkPast, codes: Codes, frozen: bool = False) -> tuple[Codes, Codes]:
         """Guess (n,), a state or -1, and trust (n,) for each row; goes on along the rows."""
         guess, trust = np.empty(len(codes), dtype=np.int32), np.empty(len(codes), dtype=np.int32)
         after = past.after(self.least)
-        kernel.follow(
-            view(codes), view(after), view(self.ring), view(self.places), 65 - len(self.places).bit_length(),
-            self.least, view(self.counters), frozen, view(guess), view(trust),
-        )  # fmt: skip
+        done = 0
+        while done < len(codes):
+            self._grow()
+            room = len(self.ring) - int(self.counters[0])
+            stop = len(codes) if room <= 0 else min(len(codes), done + room)
+            kernel.follow(
+                view(codes[done:stop]), view(after[done:stop]), view(self.ring), view(self.places),
+                65 - len(self.places).bit_length(), self.least, view(self.counters), frozen,
+                view(guess[done:stop]), view(trust[done:stop]),
+            )  # fmt: skip
+            done = stop
         return guess, trust
+
+    def _grow(self) -> None:
+        """Double the memory at the row that would not fit, so that no cut into chunks can change a guess."""
+        rows = int(self.counters[0])
+        if rows == len(self.ring) and rows < _MOST_ROWS:
+            self.ring = np.concatenate([self.ring, np.zeros_like(self.ring)])
+            if rows < _MOST_PLACES:
+                # a hash now has one bit more: its place stands in for both, and every match is verified
+                self.places = np.repeat(self.places, 2)
 
     def start(self, paths: int) -> npt.NDArray[np.int64]:
         """(paths, 3): pointer, length, misses. No new match is looked for along a path."""
@@ -79,7 +98,7 @@ class _Bet(Setting):
     def learn(
         self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
     ) -> Floats:
-        assert isinstance(past, _ChunkPast)
+        assert isinstance(past, ChunkPast)
         return self._bet(codes, *self._follower.follow(past, codes, frozen), want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:

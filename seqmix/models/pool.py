@@ -14,11 +14,12 @@ from seqmix.kernels import view
 from seqmix.models.clock import DAY, MINUTE, phase
 from seqmix.models.context import ASK, Contexts, Table
 from seqmix.models.dwell import stages
-from seqmix.models.history import Codes, Fork, History, Keys, Past, _ChunkPast, stir
+from seqmix.models.history import Codes, Fork, History, Keys, Past, ChunkPast, stir
 from seqmix.models.keep import Kept
 from seqmix.models.match import TRUSTS, Follower
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
+_LEVELS = 10  # contexts at the most
 _CURVES, _CELLS = 4096, 24  # calibration curves; cells of one, a nat of log-odds each
 
 
@@ -41,13 +42,13 @@ def _of_states(past: Past) -> list[Keys]:
 class _Pool(Setting):
     kept = ("by_seen", "by_node", "by_trust", "curves")
 
-    def __init__(self, contexts: Contexts, levels: int, least: int, alphabet: int, most: int) -> None:
+    def __init__(self, contexts: Contexts, alphabet: int) -> None:
         self.label = ""
         self._contexts = contexts
-        self._table = Table(alphabet, most)
-        self._follower = Follower(least)
-        self.by_seen = np.full((levels, 14), 0.2)
-        self.by_node = np.zeros((levels, 1024))
+        self._table = Table(alphabet, 20)
+        self._follower = Follower(6)
+        self.by_seen = np.full((_LEVELS, 14), 0.2)
+        self.by_node = np.zeros((_LEVELS, 1024))
         length = np.arange(TRUSTS) // 4
         self.by_trust = np.stack([np.minimum((length + 1) / (length + 2), 0.98), np.full(TRUSTS, 0.3)], axis=1)
         centres = np.arange(_CELLS) - (_CELLS - 1) / 2
@@ -59,19 +60,23 @@ class _Pool(Setting):
     def learn(
         self, past: Past, codes: Codes, want: npt.NDArray[np.int32], laws: Floats, frozen: bool = False
     ) -> Floats:
-        assert isinstance(past, _ChunkPast)
+        assert isinstance(past, ChunkPast)
         guess, trust = self._follower.follow(past, codes, frozen)
         return self._run(np.stack(list(self._contexts(past)), axis=1), guess, trust, codes, want, laws, frozen)
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         guess, trust = self._follower.guesses(fork, place)
         guess[guess >= self._table.states] = -1  # the path went through an unseen state: it tells nothing
-        contexts = np.stack([*self._contexts(fork), guess.astype(np.uint64), trust.astype(np.uint64)], axis=1)
-        keys, first, which = np.unique(contexts, axis=0, return_index=True, return_inverse=True)
+        contexts = self._contexts(fork)
+        whole = stir(stir(fork.order(0), guess), trust)
+        for key in contexts:
+            whole = stir(whole, key.view(np.int64))
+        _, first, which = np.unique(whole, return_index=True, return_inverse=True)
+        keys = np.stack([key[first] for key in contexts], axis=1)
         laws = np.zeros((len(keys), max(states, 1)))
         nothing = np.full(len(keys), ASK, dtype=np.int32)
         want = np.arange(len(keys), dtype=np.int32)
-        self._run(keys[:, :-2], guess[first], trust[first], nothing, want, laws)
+        self._run(keys, guess[first], trust[first], nothing, want, laws)
         return laws[which.reshape(-1), :states]
 
     def _run(
@@ -118,8 +123,5 @@ class Pool(StatesModel):
 
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         if alphabet:
-            setting = _Pool(_of_bytes, 10, 6, alphabet, 21)
-            return [setting], History(8, words=True)
-        else:
-            setting = _Pool(_of_states, 10, 6, alphabet, 20)
-            return [setting], History(6, runs=True)
+            return [_Pool(_of_bytes, alphabet)], History(8, words=True)
+        return [_Pool(_of_states, alphabet)], History(6, runs=True)

@@ -89,9 +89,7 @@ class Model(Protocol):
     ) -> Codes:
         """Joint continuations, (paths, steps) codes; the number of states seen stands for an unseen one."""
 
-    def walk(
-        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
-    ) -> Walk:
+    def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> Walk:
         """Law of each of the next steps, over at most `paths` continuations."""
 
     def setting(self) -> str:
@@ -211,25 +209,20 @@ class StatesModel(Kept, ABC):
                 out = np.concatenate([out, fork.path])
         return out
 
-    def walk(
-        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
-    ) -> Walk:
+    def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> Walk:
         when: list[int | None] = [None] * steps if times is None else list(times)
         laws = np.zeros((steps, self.seen + 1))
         exact = steps
-        weights = self._weights.now()
-        lasting = np.flatnonzero(weights > 1e-4)
-        for i in lasting:
-            weight = weights[i] / weights[lasting].sum()
-            part, steps_exact = self._walk_setting(self.settings[i], steps, max(int(paths * weight), 64), rng, when)
+        for i, weight in leading(self._weights.now()):
+            part, steps_exact = self._walk_setting(self.settings[i], steps, max(int(paths * weight), 64), when)
             laws += weight * part
             exact = min(exact, steps_exact)
         return Walk(laws, exact)
 
     def _walk_setting(
-        self, setting: Setting, steps: int, paths: int, rng: np.random.Generator, when: list[int | None]
+        self, setting: Setting, steps: int, paths: int, when: list[int | None]
     ) -> tuple[Floats, int]:
-        """Follow every continuation while there are at most `paths` of them, then `paths` drawn ones."""
+        """Follow every continuation while there are at most `paths` of them, then `paths` spread evenly over their mass."""
         laws = np.zeros((steps, self.seen + 1))
         exact = steps
         fork = self._history.fork(1, when[0])
@@ -248,7 +241,7 @@ class StatesModel(Kept, ABC):
             else:
                 exact = min(exact, step + 1)
                 flat = np.cumsum(whole.ravel())
-                spots = (np.arange(paths) + rng.random()) / paths * flat[-1]
+                spots = (np.arange(paths) + 0.5) / paths * flat[-1]
                 which, codes = np.divmod(np.minimum(np.searchsorted(flat, spots), whole.size - 1), whole.shape[1])
                 mass = np.full(paths, 1.0 / paths)
             fork.select(which)
@@ -258,6 +251,13 @@ class StatesModel(Kept, ABC):
 
     def setting(self) -> str:
         return self.settings[int(np.argmax(self._weights.now()))].label if len(self.settings) > 1 else ""
+
+
+def leading(weights: Floats) -> list[tuple[int, float]]:
+    """The heaviest models, as few as make up 99.9 % of the weight, with their shares of it."""
+    order = np.argsort(-weights, kind="stable")
+    some = order[: int(np.searchsorted(np.cumsum(weights[order]), 0.999)) + 1]
+    return [(int(i), float(weights[i] / weights[some].sum())) for i in some]
 
 
 def split(weights: Floats, paths: int, rng: np.random.Generator) -> npt.NDArray[np.int64]:

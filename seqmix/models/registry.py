@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import difflib
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -49,6 +48,8 @@ def make(kind: str, timed: bool, names: Sequence[str] | None = None) -> list[Sta
     known = {model.name: model for model in MODELS}
     for name in names:
         if name not in known:
+            import difflib  # only where it is needed: start-up time
+
             near = difflib.get_close_matches(name, known, 1)
             hint = f"did you mean {near[0]}?" if near else f"there are {', '.join(known)}"
             raise OptionError(f"no model is called {visible(name)!r}; {hint}")

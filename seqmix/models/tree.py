@@ -22,7 +22,6 @@ class Tree(StatesModel):
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         settings: list[Setting] = [
             ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2),
-            ContextTree("prior count 1/10", _orders, alphabet=alphabet, alpha=1 / 10),
-            ContextTree("prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=120),
+            ContextTree("prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=250),
         ]
         return settings, History(DEPTH)

@@ -10,7 +10,10 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import seqmix
+from seqmix.kernels import MODE
 
+# Enough for a process of its own; the kernels are named, so that interpreted ones do not announce themselves.
+BARE = {"PYTHONPATH": str(Path(seqmix.__file__).parents[1]), "SEQMIX_KERNELS": MODE}
 COMMAND = [sys.executable, "-m", "seqmix"]
 READERS = ("forecast", "score", "weights", "describe")
 
@@ -27,6 +30,5 @@ class Ended:
 def process(*arguments: str | Path, command: Sequence[str] = COMMAND, **settings: object) -> subprocess.Popen[bytes]:
     """The command as a process of its own, its streams as pipes unless said otherwise."""
     streams = {name: subprocess.PIPE for name in ("stdin", "stdout", "stderr")}
-    environment = {**os.environ, "PYTHONPATH": str(Path(seqmix.__file__).parents[1])}
     words = [*command, *map(str, arguments)]
-    return subprocess.Popen(words, **{"env": environment, **streams, **settings})  # type: ignore[call-overload]
+    return subprocess.Popen(words, **{"env": {**os.environ, **BARE}, **streams, **settings})  # type: ignore[call-overload]

@@ -26,8 +26,8 @@ HEADERS = {
 
 KEYS = {
     "forecast": ["step", "time", "probabilities", "unseen", "top", "entropy_bits", "weights"],
-    "score": ["rows", "bits", "bits_per_row", "accuracy", "brier", "best_model", "regret_bits", "bound_bits",
-              "models", "baselines"],
+    "score": ["rows", "bits", "bits_per_row", "accuracy", "brier", "law_rows", "best_model", "regret_bits",
+              "bound_bits", "models", "baselines"],
     "weights": ["row", "time", "weights"],
     "describe": ["name", "kind", "format", "compression", "column", "rows", "missing", "states", "alphabet",
                  "first_time", "last_time", "cadence_seconds", "gaps", "filled", "entropy_bits", "notes"],
@@ -110,7 +110,7 @@ def test_forecast_table(run, line):
     assert rest[0].split()[:2] == ["1", "2026-01-05T07:30:00"]
     assert rest[2] == ""
     assert rest[3].split() == ["model", "leading", "setting", "weight"]
-    assert rest[-1].startswith("90 rows read, ")
+    assert rest[-1].startswith("rows read: 90; ")
 
 
 def test_paths_are_joint_continuations(run, line):

@@ -32,7 +32,7 @@ def test_a_bad_row_leaves_no_answer(run, line, tmp_path, monkeypatch, name):
     monkeypatch.chdir(tmp_path)
     line.write_bytes(line.read_bytes() + b"2026-01-05T07:30:00,j\x1b\xe9m\n")
     before = sorted(os.listdir(tmp_path))
-    ended = run(name, "line.csv", "--format", "jsonl", "-o", "answer")
+    ended = run(name, "line.csv", "--as", "states", "--format", "jsonl", "-o", "answer")
     assert (ended.code, ended.out) == (1, "")
     assert ended.err.startswith("seqmix: line.csv:92:")
     assert ended.err.count("\n") == 1
@@ -54,3 +54,16 @@ def test_a_model_that_is_not_there(run, line, name):
     assert ended.err.startswith("seqmix: ")
     assert "memoryles" in ended.err
     assert ended.err.count("\n") == 1
+
+
+def test_rows_printed_before_a_bad_one_are_whole(run, tmp_path):
+    log = tmp_path / "log.txt"
+    long = b"x" * 60  # the bad byte is out of sight when the first rows are printed
+    log.write_bytes((b"fill" + long + b"\ncap" + long + b"\n") * 10_000 + b"j\xe9m\n")
+    ended = run("score", log, "--as", "states", "--last", "all", "--per-row", "--models", "memoryless")
+    assert ended.code == 1
+    assert ended.err.startswith(f"seqmix: {log}:20001:2: ")
+    header, *rows = ended.out.splitlines(keepends=True)
+    assert header == "row,time,value,bits\n"
+    assert 0 < len(rows) < 20_000
+    assert all(row.endswith("\n") and row.count(",") == 3 for row in rows)

@@ -8,12 +8,9 @@ import signal
 import subprocess
 import sys
 import threading
-from pathlib import Path
 
 import pytest
-from running import COMMAND, process
-
-import seqmix
+from running import BARE, COMMAND, process
 
 ROWS = b"fill\ncap\nlabel\n" * 20_000
 PER_ROW = ["score", "--last", "all", "--per-row", "--models", "memoryless"]
@@ -24,12 +21,13 @@ def finish(child: subprocess.Popen[bytes], stdin: bytes | None = None) -> tuple[
     return child.returncode, (out or b"").decode(), (err or b"").decode()
 
 
-@pytest.mark.parametrize("arguments", [["--help"], ["score", "--last", "all", "--per-row", "--models", "memoryless"]])
+@pytest.mark.parametrize("arguments", [["--help"], PER_ROW])
 def test_a_reader_that_goes_away_ends_it_quietly(arguments, tmp_path):
     log = tmp_path / "log.txt"
     log.write_bytes(ROWS)
     reader, writer = os.pipe()
-    child = process(*arguments, stdin=log.open("rb"), stdout=writer)
+    with log.open("rb") as rows:
+        child = process(*arguments, stdin=rows, stdout=writer)
     os.close(writer)
     if arguments != ["--help"]:
         os.read(reader, 100)
@@ -40,9 +38,8 @@ def test_a_reader_that_goes_away_ends_it_quietly(arguments, tmp_path):
 @pytest.mark.parametrize("arguments", [["--help"], ["--version"], ["completion", "bash"], ["models"]])
 def test_a_full_disk_is_one_line(arguments):
     with open("/dev/full", "wb") as full:
-        assert finish(process(*arguments, stdout=full)) == (
-            74, "", "seqmix: cannot write stdout: No space left on device\n",
-        )  # fmt: skip
+        ended = finish(process(*arguments, stdout=full))
+    assert ended == (74, "", "seqmix: cannot write stdout: No space left on device\n")
 
 
 def test_a_full_disk_for_output(line):
@@ -52,11 +49,8 @@ def test_a_full_disk_for_output(line):
 
 def test_a_closed_stdout_is_one_line():
     command = ["sh", "-c", 'exec "$@" >&-', "sh", *COMMAND]
-    assert finish(process("models", command=command)) == (
-        74,
-        "",
-        "seqmix: cannot write stdout: it is closed\n",
-    )
+    said = "seqmix: cannot write stdout: it is closed\n"
+    assert finish(process("models", command=command)) == (74, "", said)
 
 
 def test_a_fifo_and_stdin_by_name_give_what_the_file_gives(line, tmp_path):
@@ -91,8 +85,7 @@ def test_a_bare_environment_and_a_directory_that_cannot_be_written(line, tmp_pat
     place.mkdir()
     place.chmod(0o555)
     line.write_text(line.read_text().replace("jam", "Spülen 洗浄"), encoding="utf-8")
-    root = str(Path(seqmix.__file__).parents[1])
-    bare = {"LANG": "C", "PYTHONPATH": root, "PYTHONIOENCODING": "ascii"}
+    bare = {**BARE, "LANG": "C", "PYTHONIOENCODING": "ascii"}
     code, out, err = finish(process("forecast", "--quiet", line, cwd=place, env=bare))
     assert (code, err) == (0, "")
     assert "Spülen 洗浄" in out
@@ -102,8 +95,7 @@ def test_a_bare_environment_and_a_directory_that_cannot_be_written(line, tmp_pat
 @pytest.mark.parametrize("environment", [{"TERM": "xterm"}, {"TERM": "xterm", "NO_COLOR": "1"}])
 def test_on_a_terminal(line, environment):
     leader, follower = pty.openpty()
-    root = str(Path(seqmix.__file__).parents[1])
-    settings = {"PYTHONPATH": root, **environment}
+    settings = {**BARE, **environment}
     child = process("forecast", "--quiet", line, stdout=follower, stderr=follower, env=settings)
     code, _, _ = finish(child)
     os.close(follower)

@@ -62,13 +62,13 @@ def test_json_has_no_nan_or_infinity():
 def test_the_look_of_a_table():
     file = io.BytesIO()
     writer = Writer(file, "x", "table")
-    writer.table([("step", ">"), ("state", "<"), ("share", ">")], [("1", "洗浄", "7.5%"), ("10", "x" * 50, "92.5%")])
+    writer.table([("step", ">"), ("state", "<"), ("share", ">")], [("1", "洗浄", "7.5%"), ("10", "x" * 90, "92.5%")])
     writer.fields({"rows": "12", "best model": "trees"})
     writer.lines(["said"])
     assert file.getvalue().decode() == (
-        "step  state                                     share\n"
-        "   1  洗浄                                       7.5%\n"
-        f"  10  {'x' * 39}…  92.5%\n"
+        f"step  state{' ' * 77}share\n"
+        f"   1  洗浄{' ' * 79}7.5%\n"
+        f"  10  {'x' * 79}…  92.5%\n"
         "\n"
         "rows           12\n"
         "best model  trees\n"

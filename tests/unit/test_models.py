@@ -113,7 +113,7 @@ class TestEveryModel:
         one, rows = make(kind, model), log(kind, 700)
         one.absorb(rows)
         when = None if rows.times is None else [int(rows.times[-1]) + (i + 1) * MINUTE for i in range(4)]
-        walk = one.walk(4, 300, np.random.default_rng(1), when)
+        walk = one.walk(4, 300, when)
         law = one.predict(when[0] if when else None)
         np.testing.assert_allclose(walk.laws.sum(axis=1), 1, atol=1e-12)
         np.testing.assert_allclose(walk.laws[0, :-1], law.masses, atol=1e-3)
@@ -125,7 +125,7 @@ class TestEveryModel:
         when = None if rows.times is None else [int(rows.times[-1]) + (i + 1) * MINUTE for i in range(3)]
         paths = one.sample(3, 4000, np.random.default_rng(5), when)
         assert paths.shape == (4000, 3)
-        walk = one.walk(3, 2000, np.random.default_rng(2), when)
+        walk = one.walk(3, 2000, when)
         for step in range(3):
             shares = np.bincount(paths[:, step], minlength=walk.laws.shape[1]) / len(paths)
             assert np.abs(shares - walk.laws[step]).max() < 0.05
