@@ -110,30 +110,52 @@ def _claim(
     return best
 
 
-def rehash(old: cython.ulonglong[:, ::1], new: cython.ulonglong[:, ::1], shift: cython.int) -> cython.longlong:
-    """Move the lines of `old` into the larger, empty `new` (2 ** (64 - shift) rows); returns how many there are.
+@cython.cfunc
+@cython.nogil
+@cython.inline
+@cython.exceptval(check=False)
+def _settle(
+    table: cython.ulonglong[:, ::1], held: cython.ulonglong[:, ::1], i: cython.longlong, shift: cython.int
+) -> cython.longlong:
+    """Put line i of `held` into the first free of its places; 1, or 0 where none is free and it is dropped."""
+    wrap: cython.longlong = table.shape[0] - 1
+    slot: cython.longlong = cython.cast(cython.longlong, held[i, 0] >> shift)
+    probe: cython.longlong
+    j: cython.int
+    for probe in range(PROBES):
+        if table[slot, 0] == 0:
+            for j in range(8):
+                table[slot, j] = held[i, j]
+            return 1
+        slot = (slot + 1) & wrap
+    return 0
 
-    A line that finds none of its places free is dropped (rare at the load kept here).
+
+def spread(
+    table: cython.ulonglong[:, ::1], size: cython.longlong, held: cython.ulonglong[:, ::1], shift: cython.int
+) -> cython.longlong:
+    """Move the lines of a table that was just doubled, its upper half blank; returns how many there are.
+
+    size: rows before; shift: of the doubled table; held (17, 8): workspace. From the top down, a line goes to
+    about twice its slot, above all that has not moved; only the lowest sixteen must be held back till last.
     """
-    wrap: cython.longlong = new.shape[0] - 1
-    size: cython.longlong = old.shape[0]
-    moved: cython.longlong = 0
     i: cython.longlong
     j: cython.int
-    probe: cython.longlong
-    slot: cython.longlong
+    moved: cython.longlong = 0
     with cython.nogil:
-        for i in range(size):
-            if old[i, 0] == 0:
-                continue
-            slot = cython.cast(cython.longlong, old[i, 0] >> shift)
-            for probe in range(PROBES):
-                if new[slot, 0] == 0:
-                    for j in range(8):
-                        new[slot, j] = old[i, j]
-                    moved += 1
-                    break
-                slot = (slot + 1) & wrap
+        for i in range(16):
+            for j in range(8):
+                held[i, j] = table[i, j]
+                table[i, j] = 0
+        for i in range(size - 1, 15, -1):
+            if table[i, 0] != 0:
+                for j in range(8):
+                    held[16, j] = table[i, j]
+                table[i, 0] = 0
+                moved += _settle(table, held, 16, shift)
+        for i in range(16):
+            if held[i, 0] != 0:
+                moved += _settle(table, held, i, shift)
     return moved
 
 

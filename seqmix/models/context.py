@@ -67,9 +67,10 @@ class Table(Kept):
                 (view(self._slots), view(self._known)),
             )  # fmt: skip
             if done < rows:
-                larger = np.zeros((2 * size, 8), dtype=np.uint64)
-                self.counters[1] = kernel.rehash(view(self.lines), view(larger), 64 - size.bit_length())
-                self.lines = larger
+                # in place, so that no memory is touched twice; no view of the lines outlives a call
+                self.lines.resize((2 * size, 8), refcheck=False)
+                held = np.empty((17, 8), dtype=np.uint64)
+                self.counters[1] = kernel.spread(view(self.lines), size, view(held), 64 - size.bit_length())
 
 
 class ContextTree(Setting):

@@ -14,7 +14,6 @@ import os
 import re
 import subprocess
 import sys
-from collections.abc import Callable
 from pathlib import Path
 
 import pytest
@@ -24,7 +23,7 @@ from seqmix.kernels import MODE
 ROOT = Path(__file__).parents[2]
 EXAMPLES = ROOT / "examples"
 PYTHON_GUIDE = ROOT / "docs" / "python.md"
-WITH_SESSIONS = (ROOT / "README.md", *sorted((ROOT / "docs").glob("*.md")))
+PAGES = (ROOT / "README.md", *sorted((ROOT / "docs").glob("*.md")))
 
 SAMPLES = {
     "line.csv": ("--days", "0.5"),
@@ -32,39 +31,102 @@ SAMPLES = {
     "alarms.txt": ("--codes",),
 }
 
-_SESSION = re.compile(r"(?<=^```console\n)\$ (.*)\n((?:.*\n)*?)(?=^```$)", re.MULTILINE)
-_SNIPPET = re.compile(r"(?<=^```python\n)((?:.*\n)*?)```\n(?:\n```text\n((?:.*\n)*?)(?=^```$))?", re.MULTILINE)
+SESSION = re.compile(r"```console\n\$ (?P<command>.*)\n(?P<shown>(?:.*\n)*?)```\n")
+SNIPPET = re.compile(r"```python\n(?P<code>(?:.*\n)*?)```\n(?:\n```text\n(?P<shown>(?:.*\n)*?)```\n)?")
 
 compiled_only = pytest.mark.skipif(MODE == "interpreted", reason="takes minutes with interpreted kernels")
 
 
-def shell(command: str, format: str | None = None) -> str:
-    """What a command says in a terminal at the top of the repository; it must succeed. `seqmix` is this one."""
-    environment = {name: value for name, value in os.environ.items() if not name.startswith("SEQMIX_")}
-    environment["SEQMIX_KERNELS"] = MODE
-    environment["PYTHONPATH"] = str(ROOT)
-    if format:
-        environment["SEQMIX_FORMAT"] = format
+def shell(command: str, **environment: str) -> str:
+    """What a command says, run at the top of the repository; it must succeed. `seqmix` is the one under test."""
+    inherited = {name: value for name, value in os.environ.items() if not name.startswith("SEQMIX_")}
     done = subprocess.run(
         ["sh", "-c", f'seqmix() {{ "{sys.executable}" -m seqmix "$@"; }}\n{command}'],
-        cwd=ROOT, env=environment, stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, timeout=300,
+        cwd=ROOT, env={**inherited, "SEQMIX_KERNELS": MODE, "PYTHONPATH": str(ROOT), **environment},
+        stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, timeout=300,
     )  # fmt: skip
     assert done.returncode == 0, done.stdout
     return done.stdout
 
 
 def session(command: str) -> str:
-    """What a reader sees: a table, unless the answer goes into a pipe."""
-    return shell(command, None if "|" in command else "table")
+    """What a command says on a terminal: a table, unless the answer goes into a pipe."""
+    return shell(command) if "|" in command else shell(command, SEQMIX_FORMAT="table")
 
 
-def snippets(page: str) -> list[tuple[str, str]]:
-    """The Python blocks of a page, and what each printed; they run one after the other, like one program."""
+def run_snippet(code: str, names: dict[str, object]) -> str:
+    """What a snippet prints; `names` is what the ones before it have defined."""
+    printed = io.StringIO()
+    with contextlib.redirect_stdout(printed):
+        exec(compile(code, PYTHON_GUIDE.name, "exec"), names)
+    return printed.getvalue()
+
+
+@pytest.mark.parametrize("name", SAMPLES)
+def test_samples_are_what_the_script_writes(name: str, tmp_path: Path) -> None:
+    made, kept = tmp_path / name, EXAMPLES / name
+    subprocess.run([sys.executable, EXAMPLES / "make_line.py", *SAMPLES[name], made], check=True)
+    open_it = gzip.open if name.endswith(".gz") else open
+    with open_it(made, "rb") as new, open_it(kept, "rb") as old:
+        assert new.read() == old.read()
+
+
+def test_all_samples_are_small() -> None:
+    assert sum((EXAMPLES / name).stat().st_size for name in SAMPLES) <= 300_000
+
+
+@compiled_only
+def test_tour_runs_from_any_directory(tmp_path: Path) -> None:
+    command = tmp_path / "bin" / "seqmix"
+    command.parent.mkdir()
+    command.write_text(f'#!/bin/sh\nexec "{sys.executable}" -m seqmix "$@"\n')
+    command.chmod(0o755)
+    before = sorted(EXAMPLES.iterdir())
+    said = shell(f'cd "{tmp_path}"; "{EXAMPLES}/run.sh"', PATH=f"{command.parent}:{os.environ['PATH']}")
+    assert said.count("\n== ") == (EXAMPLES / "run.sh").read_text().count("\nshow ")
+    assert "seqmix:" not in said
+    assert sorted(EXAMPLES.iterdir()) == before
+
+
+@compiled_only
+@pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)
+def test_sessions_are_real(page: Path) -> None:
+    for found in SESSION.finditer(page.read_text(encoding="utf-8")):
+        assert found["shown"] == session(found["command"]), found["command"]
+
+
+@compiled_only
+def test_snippets_print_what_they_are_said_to(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(ROOT)
     names: dict[str, object] = {}
-    out = []
-    for found in _SNIPPET.finditer(page):
-        printed = io.StringIO()
-        with contextlib.redirect_stdout(printed), contextlib.chdir_to(ROOT):
-            exec(compile(found[1], PYTHON_GUIDE.name, "exec"), names)
-        out.append((found[2] or "", printed.getvalue()))
-    return out
+    found = list(SNIPPET.finditer(PYTHON_GUIDE.read_text(encoding="utf-8")))
+    assert found
+    for snippet in found:
+        assert run_snippet(snippet["code"], names) == (snippet["shown"] or ""), snippet["code"]
+
+
+@pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)
+def test_links_lead_somewhere(page: Path) -> None:
+    for link in re.findall(r"\]\(([^)#:]+)(?:#[^)]*)?\)", page.read_text(encoding="utf-8")):
+        assert (page.parent / link).exists(), link
+
+
+def write_anew() -> None:
+    os.chdir(ROOT)
+    for page in PAGES:
+        text = page.read_text(encoding="utf-8")
+        text = SESSION.sub(lambda found: f"```console\n$ {found[1]}\n{session(found[1])}```\n", text)
+        if page == PYTHON_GUIDE:
+            names: dict[str, object] = {}
+
+            def snippet(found: re.Match[str], names: dict[str, object] = names) -> str:
+                printed = run_snippet(found["code"], names)
+                block = f"\n```text\n{printed}```\n" if printed else ""
+                return f"```python\n{found['code']}```\n{block}"
+
+            text = SNIPPET.sub(snippet, text)
+        page.write_text(text, encoding="utf-8")
+
+
+if __name__ == "__main__":
+    write_anew()
