@@ -76,6 +76,6 @@ def describe(log: Any, **reading: Any) -> Description:
             cadence_seconds=None if cadence is None else cadence / 1e6,
             gaps=source.gaps,
             filled=source.filled,
-            entropy_bits=max(float(-(shares * np.log2(shares)).sum()), 0.0),
+            entropy_bits=abs(float((shares * np.log2(shares)).sum())),
             notes=list(source.notes),
         )

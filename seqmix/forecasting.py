@@ -39,8 +39,8 @@ class Forecast:
     """What comes next.
 
     steps: one `Step` a row ahead. weights: posterior probability of each model, largest first; they add to 1.
-    settings: leading setting of each model. exact: so many steps follow every continuation, later ones the most of them.
-    rows: rows read. paths: joint continuations when asked for, else None.
+    settings: leading setting of each model. exact: so many steps follow every continuation, later ones the bulk
+    of them. rows: rows read. paths: joint continuations when asked for, else None.
     """
 
     steps: list[Step]
@@ -121,6 +121,6 @@ def _step(number: int, time: str | None, law: np.ndarray, labels: Sequence[str])
     order = np.argsort(-law[:-1], kind="stable")
     probabilities = {labels[code]: float(law[code]) for code in order}
     some = law[law > 0]
-    entropy = float(-(some * np.log2(some)).sum())
+    entropy = abs(float((some * np.log2(some)).sum()))
     top = labels[order[0]] if len(order) else None
-    return Step(number, time, probabilities, float(law[-1]), top, max(entropy, 0.0))
+    return Step(number, time, probabilities, float(law[-1]), top, entropy)

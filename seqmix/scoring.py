@@ -28,7 +28,7 @@ class Score:
     rows: scored rows that have a value. bits: their loss under the mixture. accuracy: share of rows whose most
     probable state came. brier: mean of sum over states (mass - 1 if it came)^2, 0 to 2. law_rows: rows that both
     rest on. best_model: least bits here. regret_bits: bits more than it. bound_bits: most that the regret can be
-    (None when frozen). models, baselines: a dict each, as in `record`.
+    (None when frozen). All three are None where no row was scored. models, baselines: a dict each, as in `record`.
     """
 
     rows: int
@@ -37,8 +37,8 @@ class Score:
     accuracy: float | None
     brier: float | None
     law_rows: int
-    best_model: str
-    regret_bits: float
+    best_model: str | None
+    regret_bits: float | None
     bound_bits: float | None
     models: list[dict[str, Any]]
     baselines: list[dict[str, Any]]
@@ -243,9 +243,9 @@ class _Run:
             accuracy=laws.hits / laws.total if laws.rows else None,
             brier=laws.squares / laws.total if laws.rows else None,
             law_rows=laws.rows,
-            best_model=mixture.names[best],
-            regret_bits=self._bits - float(bits[best]),
-            bound_bits=None if self._frozen else float(bound[best]),
+            best_model=mixture.names[best] if self._rows else None,
+            regret_bits=self._bits - float(bits[best]) if self._rows else None,
+            bound_bits=float(bound[best]) if self._rows and not self._frozen else None,
             models=models,
             baselines=[
                 {"name": name, "bits": loss, "bits_per_row": loss * a_row} for name, loss in self._base_bits.items()

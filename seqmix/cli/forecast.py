@@ -19,16 +19,16 @@ PLACES = ("most likely", "then", "then")  # the states of a step that the table 
 @option("--steps", type=click.IntRange(min=1), metavar="N", default=5, help="Steps ahead, in rows.")
 @option("--paths", type=click.IntRange(min=1), metavar="N",
         help="Print N joint continuations instead of probabilities.")  # fmt: skip
-@option("--seed", type=click.IntRange(min=0), metavar="N", default=0, help="Seed of the sample paths.")
+@option("--seed", type=click.IntRange(min=0), metavar="N", default=0, help="Seed of the paths.")
 @takes_models
 @reads_log
 @writes_answer
 def command(source: Source, answer: Answer, models: list[str] | None, steps: int, paths: int | None, seed: int) -> None:
     """Say what comes next after the last row of LOG.
 
-    Each step gets the probability of every state, and of a state never seen before. Steps far ahead come from
-    sample paths drawn with a fixed seed, so the same log gives the same answer. The weights tell how much of
-    the answer comes from each model.
+    Each step gets the probability of every state, and of a state never seen before. Steps far ahead rest on the
+    bulk of the continuations, no longer on all of them. The weights tell how much of the answer comes from each
+    model. The same log gives the same answer.
     """
     import seqmix
 
@@ -73,9 +73,9 @@ def _write_table(writer: Writer, forecast: Forecast) -> None:
         [("model", "<"), ("leading setting", "<"), ("weight", ">")],
         [(name, forecast.settings[name], percent(weight)) for name, weight in forecast.weights.items()],
     )
-    exact = min(forecast.exact, len(forecast.steps))
-    law = "all steps are exact" if exact == len(forecast.steps) else f"steps after {exact} come from sample paths"
-    writer.lines([f"rows read: {forecast.rows}; {law}"])
+    last = len(forecast.steps)
+    law = "" if forecast.exact >= last else f"; after step {forecast.exact} the bulk of the continuations"
+    writer.lines([f"rows read: {forecast.rows}{law}"])
 
 
 def _write_paths(writer: Writer, forecast: Forecast) -> None:

@@ -346,8 +346,9 @@ def tree(
         for t in range(start, n):
             code = codes[t]
             if want[t] >= 0:
-                _tree_law(t, keys, child, sides, mask, table, counts, ratios, shift, alpha, slots, own, mass,
-                          laws, want[t])
+                _tree_law(
+                    t, keys, child, sides, mask, table, counts, ratios, shift, alpha, slots, own, mass, laws, want[t]
+                )
             bits[t] = 0.0
             if code < 0:
                 done = t + 1
@@ -500,9 +501,7 @@ def _calibrated(curves: cython.float[:, ::1], curve: cython.int, odds: cython.do
 @cython.nogil
 @cython.inline
 @cython.exceptval(check=False)
-def _calibrate(
-    curves: cython.float[:, ::1], curve: cython.int, odds: cython.double, bit: cython.int
-) -> cython.void:
+def _calibrate(curves: cython.float[:, ::1], curve: cython.int, odds: cython.double, bit: cython.int) -> cython.void:
     """Move the two cells around `odds` towards what came."""
     place: cython.double = odds + 11.5
     cell: cython.int = cython.cast(cython.int, place)
@@ -685,9 +684,32 @@ def pool(
         for t in range(start, n):
             code = codes[t]
             if want[t] >= 0:
-                _pool_law(t, keys, guess[t], trust[t], path_start, path, child, sides, mask, table, counts,
-                          chances, by_seen, by_node, by_trust, curves, shift, slots, seen, odds, heap, mass,
-                          laws, want[t])
+                _pool_law(
+                    t,
+                    keys,
+                    guess[t] if guess[t] < state[0] else -1,
+                    trust[t],
+                    path_start,
+                    path,
+                    child,
+                    sides,
+                    mask,
+                    table,
+                    counts,
+                    chances,
+                    by_seen,
+                    by_node,
+                    by_trust,
+                    curves,
+                    shift,
+                    slots,
+                    seen,
+                    odds,
+                    heap,
+                    mass,
+                    laws,
+                    want[t],
+                )
             bits[t] = 0.0
             if code < 0:
                 done = t + 1
@@ -699,7 +721,7 @@ def pool(
                     _mark(code, path_start, path, mask)
             total = 1.0
             m = 0
-            hinted = guess[t] >= 0
+            hinted = 0 <= guess[t] < state[0]  # a state that was never learned cannot be hinted at
             ahead = path_start[guess[t]] if hinted else 0
             for step in range(path_start[code], path_start[code + 1]):
                 line = path[step, 0]
@@ -720,8 +742,9 @@ def pool(
                                 if hint >> at & 1 == 0:
                                     strength = -strength
                                 said = by_trust[trust[t], 1] * strength
-                            logit = _pooled(levels, j, node, said, counts, chances, by_seen, by_node, slots,
-                                            m, seen, odds)
+                            logit = _pooled(
+                                levels, j, node, said, counts, chances, by_seen, by_node, slots, m, seen, odds
+                            )
                             curve = _curve(keys[t, 1], node)
                             p = _calibrated(curves, curve, logit)
                             total *= p if bit else 1.0 - p

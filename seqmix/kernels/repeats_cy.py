@@ -123,6 +123,7 @@ def bet(
     right: cython.double
     others: cython.double
     p: cython.double
+    guessed: cython.bint
     with cython.nogil:
         for t in range(codes.shape[0]):
             code = codes[t]
@@ -130,7 +131,8 @@ def bet(
             total = state[1] + 0.5 * known
             right = 0.0
             others = total
-            if guess[t] >= 0 and state[0] > 1:
+            guessed = 0 <= guess[t] < state[0]  # a state that was never learned cannot be bet on
+            if guessed and state[0] > 1:
                 right = (events[trust[t], 0] + 0.5) / (events[trust[t], 0] + events[trust[t], 1] + 1.0)
                 others = total - seen[guess[t]] - 0.5
             if want[t] >= 0:
@@ -152,7 +154,7 @@ def bet(
                 state[0] = code + 1
             seen[code] += 1.0
             state[1] += 1
-            if guess[t] >= 0:
+            if guessed:
                 k = 0 if code == guess[t] else 1
                 events[trust[t], k] += 1.0
                 if events[trust[t], k] >= EVENTS_MOST:
@@ -248,7 +250,7 @@ def parse(
     visits: cython.longlong[:, ::1],
     shift: cython.int,
     room: cython.longlong,
-    full: cython.bint,
+    last: cython.bint,
     frozen: cython.bint,
     state: cython.longlong[::1],
     want: cython.int[::1],
@@ -260,7 +262,7 @@ def parse(
     edges (slots, 3) = node, state, child (0 = free); visits (nodes, 2) = times entered, times left by a state;
     state = [states seen, nodes, node now]. With A states seen, a child entered c times of the n times the node
     was left has mass (c (A - 1) + 1) / (n (A - 1) + A). Returns the row where the tree must grow first, or n;
-    with `full`, no phrase is added any more; `frozen`: predict and move on only.
+    when that is the `last` growth, no phrase is added any more; `frozen`: predict and move on only.
     """
     n: cython.Py_ssize_t = codes.shape[0]
     done: cython.Py_ssize_t = start
@@ -270,6 +272,7 @@ def parse(
     slot: cython.longlong
     child: cython.longlong
     node: cython.longlong
+    full: cython.bint
     with cython.nogil:
         for t in range(start, n):
             code = codes[t]
@@ -281,7 +284,8 @@ def parse(
             if code < 0:
                 done = t + 1
                 continue
-            if state[1] >= room and not full and not frozen:
+            full = state[1] >= room
+            if full and not last and not frozen:
                 break
             slot = _child(edges, node, code, shift)
             child = edges[slot, 2]
@@ -293,13 +297,14 @@ def parse(
                 continue
             if code >= state[0]:
                 state[0] = code + 1
-            visits[node, 1] += 1
             if child:
+                visits[node, 1] += 1
                 visits[child, 0] += 1
                 state[2] = child
             else:
                 state[2] = 0  # the phrase ends here; the next one starts at the root
                 if not full:
+                    visits[node, 1] += 1
                     edges[slot, 0] = node
                     edges[slot, 1] = code
                     edges[slot, 2] = state[1]

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import builtins
+from collections.abc import Callable
 from typing import Any
 
 compiled = False
 
 
 class _Type:
-    """A C type: callable and subscriptable, so that annotations and casts can be evaluated."""
+    """A C type: what a cast to it does to a number."""
 
-    def __getitem__(self, _: Any) -> _Type:
-        return self
+    def __init__(self, convert: Callable[[Any], Any]) -> None:
+        self.convert = convert
 
 
 class _NoGil:
@@ -28,7 +30,9 @@ class _NoGil:
 
 
 nogil = _NoGil()
-void = int = bint = uchar = ushort = longlong = ulonglong = float = double = Py_ssize_t = _Type()
+void = _Type(lambda value: value)
+bint = uchar = ushort = longlong = ulonglong = Py_ssize_t = int = _Type(builtins.int)
+float = double = _Type(builtins.float)
 
 
 def cfunc(function: Any) -> Any:
@@ -42,8 +46,8 @@ def exceptval(*_: Any, **__: Any) -> Any:
     return cfunc
 
 
-def cast(_: Any, value: Any) -> Any:
-    return value
+def cast(kind: _Type, value: Any) -> Any:
+    return kind.convert(value)
 
 
 def declare(_: Any, value: Any = None) -> Any:

@@ -35,21 +35,41 @@ def _mass(bits: cython.double) -> cython.double:
 @cython.nogil
 @cython.inline
 @cython.exceptval(check=False)
+def _awake(shares: cython.double[:, ::1], r: cython.Py_ssize_t, chance: cython.double[::1]) -> cython.double:
+    """Weight of the models awake at rate r."""
+    i: cython.Py_ssize_t
+    total: cython.double = 0.0
+    for i in range(shares.shape[1]):
+        if chance[i] >= 0.0:
+            total += shares[r, i]
+    return total
+
+
+@cython.cfunc
+@cython.nogil
+@cython.inline
+@cython.exceptval(check=False)
 def _weights(
     behind: cython.double[::1],
+    out_of_bed: cython.double,
     kinds: cython.int,
     shares: cython.double[:, ::1],
     camps: cython.double[::1],
+    chance: cython.double[::1],
     before: cython.double[:, ::1],
     at: cython.Py_ssize_t,
 ) -> cython.void:
-    """before[at] = weight of every model, over all camps."""
+    """before[at] = weight of every model awake, over all camps; in each camp those awake add to its weight."""
     i: cython.Py_ssize_t
     r: cython.Py_ssize_t
+    part: cython.double
     for i in range(behind.shape[0]):
-        before[at, i] = _mass(camps[0]) * _mass(behind[i])
-        for r in range(kinds):
-            before[at, i] += _mass(camps[r + 1]) * shares[r, i]
+        before[at, i] = _mass(camps[0]) * _mass(behind[i] - out_of_bed) if chance[i] >= 0.0 else 0.0
+    for r in range(kinds):
+        part = _mass(camps[r + 1]) / _awake(shares, r, chance)
+        for i in range(behind.shape[0]):
+            if chance[i] >= 0.0:
+                before[at, i] += part * shares[r, i]
 
 
 def update(
@@ -60,7 +80,8 @@ def update(
     behind: cython.double[::1],
     shares: cython.double[:, ::1],
     camps: cython.double[::1],
-    chance: cython.double[::1],
+    frozen: cython.bint,
+    work: cython.double[::1],
     want: cython.int[::1],
     before: cython.double[:, ::1],
     bits: cython.double[::1],
@@ -72,8 +93,9 @@ def update(
     behind (models,): minus log2 of the weights of static Bayes. shares (rates, models): weights under fixed
     share, which after each row hands `rate` (the first `kinds` of `rates`) of all weight back to `prior`
     (Herbster & Warmuth 1998). camps (1 + rates,): minus log2 of the weights of static Bayes, first, and of each
-    rate. chance (models,) is workspace.
-    Writes bits (n,), the loss of the mixture, and before[want[t]], the weights before row t.
+    rate. work (models + 1 + rates,). frozen: mix only.
+    Writes bits (n,), the loss of the mixture, NaN where all sleep, and before[want[t]], the weights before row t
+    of the models awake at it.
     """
     models: cython.Py_ssize_t = losses.shape[1]
     t: cython.Py_ssize_t
@@ -88,8 +110,6 @@ def update(
     asleep: cython.bint
     with cython.nogil:
         for t in range(losses.shape[0]):
-            if want[t] >= 0:
-                _weights(behind, kinds, shares, camps, before, want[t])
             best = 1e300
             joint = 1e300
             heavy = 1e300
@@ -101,46 +121,52 @@ def update(
                 best = min(best, losses[t, i])
                 joint = min(joint, behind[i] + losses[t, i])
                 heavy = min(heavy, behind[i])
-            bits[t] = 0.0
             if best == 1e300:
-                continue  # nobody is awake
+                bits[t] = losses[t, 0]  # nobody is awake: NaN
+                if want[t] >= 0:
+                    for i in range(models):
+                        before[want[t], i] = 0.0
+                continue
             # static Bayes
             total = 0.0
             awake = 0.0
             for i in range(models):
-                chance[i] = -1.0
+                work[i] = -1.0
                 if losses[t, i] == losses[t, i]:
-                    chance[i] = _mass(losses[t, i] - best)
+                    work[i] = _mass(losses[t, i] - best)
                     total += _mass(behind[i] + losses[t, i] - joint)
                     if asleep:
                         awake += _mass(behind[i] - heavy)
             share = joint - log(total) / LN2
-            if asleep:
-                share -= heavy - log(awake) / LN2
-            for i in range(models):
-                if chance[i] >= 0.0:
-                    behind[i] += losses[t, i] - share
-            camps[0] += share
-            joint = camps[0]
+            awake = heavy - log(awake) / LN2 if asleep else 0.0
+            if want[t] >= 0:
+                _weights(behind, awake, kinds, shares, camps, work, before, want[t])
+            share -= awake
+            if not frozen:
+                for i in range(models):
+                    if work[i] >= 0.0:
+                        behind[i] += losses[t, i] - share
+            work[models] = camps[0] + share
+            joint = work[models]
             # fixed share
             for r in range(kinds):
-                awake = 0.0
                 total = 0.0
                 for i in range(models):
-                    if chance[i] >= 0.0:
-                        awake += shares[r, i]
-                        total += shares[r, i] * chance[i]
-                share = total / awake
-                for i in range(models):
-                    if chance[i] >= 0.0:
-                        shares[r, i] = shares[r, i] * chance[i] / share
-                    shares[r, i] = (1.0 - rates[r]) * shares[r, i] + rates[r] * prior[i]
-                camps[r + 1] += best - log(share) / LN2
-                joint = min(joint, camps[r + 1])
+                    if work[i] >= 0.0:
+                        total += shares[r, i] * work[i]
+                share = total / _awake(shares, r, work)
+                if not frozen:
+                    for i in range(models):
+                        if work[i] >= 0.0:
+                            shares[r, i] = shares[r, i] * work[i] / share
+                        shares[r, i] = (1.0 - rates[r]) * shares[r, i] + rates[r] * prior[i]
+                work[models + r + 1] = camps[r + 1] + best - log(share) / LN2
+                joint = min(joint, work[models + r + 1])
             # static and switching together
             total = 0.0
             for r in range(kinds + 1):
-                total += _mass(camps[r] - joint)
+                total += _mass(work[models + r] - joint)
             bits[t] = joint - log(total) / LN2
-            for r in range(kinds + 1):
-                camps[r] -= bits[t]
+            if not frozen:
+                for r in range(kinds + 1):
+                    camps[r] = work[models + r] - bits[t]

@@ -6,14 +6,16 @@ import itertools
 import os
 import threading
 from collections.abc import Callable, Sequence
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.errors import OptionError
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
 from seqmix.models.keep import Kept
-from seqmix.models.protocol import Ask, Floats, Model, StatesLaw, Walk, leading, split
+from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
 _WORTH_THREADS = 2048  # rows; below, starting threads costs more than it saves
@@ -39,16 +41,35 @@ class Mixture(Kept):
     ) -> None:
         names = None if models is None else [model for model in models if isinstance(model, str)]
         given = [model for model in models or () if not isinstance(model, str)]
+        if names and given:
+            raise OptionError("give the models by name or as objects, not both")
         self.models: list[Model] = [*given] if given else [*registry.make(kind, timed, names)]
+        if len(set(self.names)) < len(self.models):
+            raise OptionError("two models have the same name")
         self.weights = Weights([model.prior_cost for model in self.models], rates)
-        self.seen = 256 if kind == "bytes" else 0
+        self._alphabet = 256 if kind == "bytes" else 0
+        self.seen = self._alphabet
         self.rows = 0
         self.bits = 0.0
         self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
         self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows predicted by each model itself
 
     def parts(self) -> dict[str, Kept]:
-        return {"weights": self.weights} | {m.name: m for m in self.models if isinstance(m, Kept)}
+        return {"weights": self.weights}
+
+    def state(self) -> dict[str, Any]:
+        """Everything learned, models included: flat, numpy arrays and plain scalars."""
+        out = super().state()
+        for model in self.models:
+            out.update({f"model.{model.name}.{name}": value for name, value in model.state().items()})
+        return out
+
+    def restore(self, state: dict[str, Any]) -> None:
+        """Go on from a `state()` of a mixture of the same models."""
+        super().restore(state)
+        for model in self.models:
+            start = f"model.{model.name}."
+            model.restore({name[len(start) :]: v for name, v in state.items() if name.startswith(start)})
 
     @property
     def names(self) -> list[str]:
@@ -77,11 +98,11 @@ class Mixture(Kept):
 
         _share_out(one, len(self.models), len(rows))
         want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
+        asleep = np.isnan(losses)
         bits, before = self.weights.mix(losses, want, frozen)
         bits[rows.codes < 0] = 0.0
         if ask is not None:
             ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
-        asleep = np.isnan(losses)
         self.rows += len(rows)
         self.bits += float(bits.sum())
         self.model_bits += np.where(asleep, bits[:, None], losses).sum(axis=0)
@@ -90,6 +111,8 @@ class Mixture(Kept):
 
     def _admit(self, codes: npt.NDArray[np.int32]) -> None:
         """Note the states of a chunk; the models rely on new ones being numbered as they come."""
+        if self._alphabet and int(codes.max()) >= self._alphabet:
+            raise ValueError(f"codes of bytes go from 0 to {self._alphabet - 1}")
         top = np.maximum.accumulate(np.maximum(codes, self.seen - 1))
         if top[0] > self.seen or (np.diff(top) > 1).any():
             raise ValueError("codes must number the states in order of first appearance")
@@ -97,10 +120,14 @@ class Mixture(Kept):
 
     def predict(self, time: int | None = None) -> StatesLaw:
         """Law of the next row, at `time` (microseconds) where the log has times."""
-        laws = [model.predict(time) for model in self.models]
-        weights = self.weights.now()
-        masses = np.einsum("i,ik->k", weights, np.stack([law.masses for law in laws]))
-        return StatesLaw(masses, float(weights @ np.array([law.unseen for law in laws])))
+        weighed = zip(self.weights.now().tolist(), (model.predict(time) for model in self.models), strict=True)
+        laws = [(weight, law) for weight, law in weighed if law is not None]
+        masses = np.zeros(max(len(law.masses) for _, law in laws))
+        for weight, law in laws:
+            masses[: len(law.masses)] += weight * law.masses
+        unseen = sum(weight * law.unseen for weight, law in laws)
+        whole = float(masses.sum()) + unseen  # 1, but for models asleep and the last bit
+        return StatesLaw(masses / whole, unseen / whole)
 
     def walk(self, steps: int, times: Sequence[int | None] | None = None, paths: int = 2000) -> Walk:
         """Law of each of the next steps: exact for the first, and while at most `paths` continuations are there.
@@ -112,7 +139,7 @@ class Mixture(Kept):
         laws = np.zeros((steps, len(first.masses) + 1))
         exact = steps
         for i, weight in leading(self.weights.now()) if steps > 1 else []:
-            walk = self.models[i].walk(steps, max(int(paths * weight), 64), times)
+            walk = self.models[i].walk(steps, max(int(paths * weight), FEWEST_PATHS), times)
             laws += weight * walk.laws
             exact = min(exact, walk.exact)
         laws[0, :-1], laws[0, -1] = first.masses, first.unseen

@@ -28,6 +28,8 @@ class Weights(Kept):
 
     def __init__(self, costs: Sequence[float] | Floats, rates: Sequence[float] = RATES) -> None:
         """costs (models,): prior costs in bits, up to a constant."""
+        if not all(0.0 < rate < 1.0 for rate in rates):
+            raise ValueError("fixed-share rates lie between 0 and 1")
         prior = np.exp2(-np.asarray(costs, dtype=np.float64))
         self.prior: Floats = prior / prior.sum()
         self.costs: Floats = -np.log2(self.prior)  # bits, normalised
@@ -37,31 +39,25 @@ class Weights(Kept):
         halves = [1.0] + [1.0 + np.log2(len(rates))] * len(rates) if rates else [0.0]
         self.camps: Floats = np.array(halves, dtype=np.float64)
 
-    def mix(
-        self, losses: Floats, want: npt.NDArray[np.int32], frozen: bool = False
-    ) -> tuple[Floats, Floats]:
+    def mix(self, losses: Floats, want: npt.NDArray[np.int32], frozen: bool = False) -> tuple[Floats, Floats]:
         """Learn losses (n, models) in bits, NaN = asleep; `frozen` leaves the weights as they are.
 
-        Returns the loss of the mixture (n,) and the weights before the rows with want[t] >= 0, (asked, models).
+        Returns the loss of the mixture (n,), NaN where all sleep, and the weights before the rows with want[t] >= 0 of
+        the models awake there, (asked, models).
         """
         rows, models = losses.shape
         before = np.empty((max(int(want.max(initial=-1)) + 1, 1), models))
         if models == 1:
             before[:] = 1.0
-            return np.nan_to_num(losses[:, 0], nan=0.0), before
-        if frozen:
-            before[:] = self.now()
-            best = np.fmin.reduce(losses, axis=1)
-            awake = np.where(np.isnan(losses), 0.0, before[0])
-            masses = np.exp2(best[:, None] - np.nan_to_num(losses, nan=np.inf))
-            return best - np.log2((awake * masses).sum(axis=1) / awake.sum(axis=1)), before
+            return losses[:, 0].copy(), before
         bits = np.empty(rows)
         # a memoryview cannot have zero rows: without rates, pass one line that no rate reads
         shares = self.shares if len(self._rates) else np.zeros((1, models))
         kernel.update(
             view(np.ascontiguousarray(losses)), view(self.prior), len(self._rates),
             view(self._rates if len(self._rates) else np.zeros(1)), view(self.behind), view(shares),
-            view(self.camps), view(np.empty(models)), view(want), view(before), view(bits),
+            view(self.camps), frozen, view(np.empty(models + 1 + len(self._rates))),
+            view(want), view(before), view(bits),
         )  # fmt: skip
         return bits, before
 

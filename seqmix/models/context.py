@@ -42,10 +42,6 @@ class Table(Kept):
         self._slots = np.zeros(_DEEPEST, dtype=np.int64)
         self._known = np.zeros(_DEEPEST, dtype=np.int32)
 
-    @property
-    def states(self) -> int:
-        return int(self.counters[0])
-
     def admit(self, codes: Codes) -> None:
         """Make room for the digits of all these states."""
         self.digits.grow(int(codes.max(initial=-1)) + 1)

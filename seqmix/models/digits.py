@@ -11,6 +11,8 @@ Digits hang in a tree; an inner node of it is a *line*, numbered so that parents
 
 from __future__ import annotations
 
+import threading
+
 import numpy as np
 
 
@@ -31,6 +33,7 @@ class Digits:
         self._starts = [0]
         self._steps: list[tuple[int, int]] = []
         self._child = [[-1] * 8]
+        self._growing = threading.Lock()  # models that learn side by side share the paths
         self._pack()
 
     def __len__(self) -> int:
@@ -59,7 +62,9 @@ class Digits:
 
     def grow(self, states: int) -> None:
         """Make sure that states 0..states-1 have paths."""
-        if states > len(self):
+        with self._growing:
+            if states <= len(self):
+                return
             for state in range(len(self), max(states, 2 * len(self), 8)):
                 self._add(digits_of(state))
             self._pack()

@@ -27,5 +27,6 @@ class Markov(StatesModel):
             ContextTree(f"order {k}, prior count {text}", _last(k), alphabet=alphabet, alpha=alpha, most=18)
             for k in ORDERS
             for alpha, text in ((1 / 2, "1/2"), (1 / 16, "1/16"))
+            if text == "1/16" or not alphabet  # a byte has few successors: a half for each of 256 is too much
         ]
         return settings, History(max(ORDERS))

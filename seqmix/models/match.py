@@ -7,7 +7,7 @@ import numpy.typing as npt
 
 from seqmix.kernels import repeats as kernel
 from seqmix.kernels import view
-from seqmix.models.history import Codes, Fork, History, Past, ChunkPast
+from seqmix.models.history import ChunkPast, Codes, Fork, History, Past
 from seqmix.models.keep import Kept
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
@@ -105,7 +105,6 @@ class _Bet(Setting):
         laws = np.zeros((fork.size, max(states, 1)))
         nothing = np.full(fork.size, -1, dtype=np.int32)
         guess, trust = self._follower.guesses(fork, place)
-        guess[guess >= self.counters[0]] = -1  # the path went through an unseen state: it tells nothing
         self._bet(nothing, guess, trust, np.arange(fork.size, dtype=np.int32), laws)
         return laws[:, :states]
 

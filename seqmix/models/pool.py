@@ -14,7 +14,7 @@ from seqmix.kernels import view
 from seqmix.models.clock import DAY, MINUTE, phase
 from seqmix.models.context import ASK, Contexts, Table
 from seqmix.models.dwell import stages
-from seqmix.models.history import Codes, Fork, History, Keys, Past, ChunkPast, stir
+from seqmix.models.history import ChunkPast, Codes, Fork, History, Keys, Past, stir
 from seqmix.models.keep import Kept
 from seqmix.models.match import TRUSTS, Follower
 from seqmix.models.protocol import Floats, Setting, StatesModel
@@ -66,7 +66,6 @@ class _Pool(Setting):
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         guess, trust = self._follower.guesses(fork, place)
-        guess[guess >= self._table.states] = -1  # the path went through an unseen state: it tells nothing
         contexts = self._contexts(fork)
         whole = stir(stir(fork.order(0), guess), trust)
         for key in contexts:

@@ -22,6 +22,8 @@ from seqmix.series.rows import Rows
 
 Floats = npt.NDArray[np.float64]
 
+FEWEST_PATHS = 512  # continuations that even a light setting may follow
+
 
 class Ask:
     """Rows of a chunk whose whole law is wanted, not just the loss.
@@ -81,8 +83,8 @@ class Model(Protocol):
         frozen: the rows are followed, nothing is learned from them.
         """
 
-    def predict(self, time: int | None = None) -> StatesLaw:
-        """Law of the next row, at `time` (microseconds) where the log has times."""
+    def predict(self, time: int | None = None) -> StatesLaw | None:
+        """Law of the next row, at `time` (microseconds) where the log has times. None = asleep."""
 
     def sample(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
@@ -214,15 +216,15 @@ class StatesModel(Kept, ABC):
         laws = np.zeros((steps, self.seen + 1))
         exact = steps
         for i, weight in leading(self._weights.now()):
-            part, steps_exact = self._walk_setting(self.settings[i], steps, max(int(paths * weight), 64), when)
+            part, steps_exact = self._walk_setting(
+                self.settings[i], steps, max(int(paths * weight), FEWEST_PATHS), when
+            )
             laws += weight * part
             exact = min(exact, steps_exact)
         return Walk(laws, exact)
 
-    def _walk_setting(
-        self, setting: Setting, steps: int, paths: int, when: list[int | None]
-    ) -> tuple[Floats, int]:
-        """Follow every continuation while there are at most `paths` of them, then `paths` spread evenly over their mass."""
+    def _walk_setting(self, setting: Setting, steps: int, paths: int, when: list[int | None]) -> tuple[Floats, int]:
+        """Follow every continuation while there are at most `paths`, then so many spread evenly over their mass."""
         laws = np.zeros((steps, self.seen + 1))
         exact = steps
         fork = self._history.fork(1, when[0])
@@ -234,7 +236,7 @@ class StatesModel(Kept, ABC):
             if step + 1 == steps:
                 break
             whole = mass[:, None] * ahead
-            which, codes = np.nonzero(whole > 1e-9)
+            which, codes = np.nonzero(whole > 1e-7)
             if len(which) <= paths:
                 mass = whole[which, codes]
                 mass /= mass.sum()

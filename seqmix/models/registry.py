@@ -52,7 +52,7 @@ def make(kind: str, timed: bool, names: Sequence[str] | None = None) -> list[Sta
 
             near = difflib.get_close_matches(name, known, 1)
             hint = f"did you mean {near[0]}?" if near else f"there are {', '.join(known)}"
-            raise OptionError(f"no model is called {visible(name)!r}; {hint}")
+            raise OptionError(f"no model is called '{visible(name)}'; {hint}")
         if known[name] not in fitting:
             why = "a log with times" if kind in known[name].kinds else f"{' or '.join(known[name].kinds)}, not {kind}"
             raise OptionError(f"the model {name} is for {why}; leave it out")

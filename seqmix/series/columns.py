@@ -80,9 +80,7 @@ class Sample:
         if value is None:
             rest = [i for i in range(len(self.columns)) if i != when]
             if len(rest) != 1:
-                raise OptionError(
-                    f"which column of {visible(self.log)}? Say --column NAME or NUMBER; {self._list()}"
-                )
+                raise OptionError(f"which column of {visible(self.log)}? Say --column NAME or NUMBER; {self._list()}")
             value = rest[0]
             notes.append(f"column {self.describe(value)} taken as the value; --column changes it")
         if value == when:

@@ -58,7 +58,7 @@ class GapFiller:
         """What was met, a sentence each."""
         notes = []
         if self.filled:
-            notes.append(f"missing rows put into {self.gaps - self.left} gaps of the clock: {self.filled}")
+            notes.append(f"gaps in the clock: {self.gaps - self.left}; missing rows put into them: {self.filled}")
         if self.left:
             notes.append(f"gaps of more than {MAX_FILL} rows, left as they are: {self.left}")
         if self.disorder:

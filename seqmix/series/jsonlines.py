@@ -54,9 +54,7 @@ class JsonLines:
         names = list(objects[0])
         return Sample(log, names, [[_text(record.get(name)) for record in objects] for name in names])
 
-    def cells(
-        self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside
-    ) -> Iterator[str]:
+    def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The values, or the values under one key.
 
         Raises DataError for a line that is not JSON, is not an object where the first is one, or has a nested

@@ -40,9 +40,7 @@ class Layout(Protocol):
     def sample(self, log: str, options: Options, notes: list[str]) -> Sample:
         """The start of the log as columns; adds to `notes` what was assumed about a header."""
 
-    def cells(
-        self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside
-    ) -> Iterator[str]:
+    def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The cells of the column `value`; their times, from the column `time`, and lines go `beside`.
 
         Raises DataError at the first row that cannot be read.

@@ -29,9 +29,7 @@ class Lines:
         names = [lines[0].strip()] if header and lines else None
         return Sample(log, names, [lines[header:]], single=True)
 
-    def cells(
-        self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside
-    ) -> Iterator[str]:
+    def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The lines after the header."""
         lines = chain.from_iterable(map(split_lines, text.lines()))
         return islice(lines, len(sample.names or ()), None)

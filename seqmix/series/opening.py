@@ -69,7 +69,7 @@ def open_log(
 
 def _as_bytes(text: Text, options: Options) -> bool:
     if options == Options():
-        return not is_text(text.sample, text.whole)
+        return not is_text(text.sample)
     return options.kind == "bytes"
 
 
@@ -129,9 +129,7 @@ def _cadence(clock: Clock, times: Sequence[str]) -> int | None:
         return find_cadence(clock.parse(times[: error.index]))
 
 
-def _pieces(
-    cells: Iterator[str], beside: Beside, codes: Codes, clock: Clock, when: int | None
-) -> Iterator[Piece]:
+def _pieces(cells: Iterator[str], beside: Beside, codes: Codes, clock: Clock, when: int | None) -> Iterator[Piece]:
     """`CHUNK` rows at a time, so that the alphabet at a row does not depend on how the bytes arrive."""
     coded = map(codes.__getitem__, cells)
     while len(batch := np.fromiter(islice(coded, CHUNK), np.int32)):

@@ -55,9 +55,7 @@ class Separated:
         columns = [[row[index] for row in self._rows[header:]] for index in range(self._width)]
         return Sample(log, names, columns)
 
-    def cells(
-        self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside
-    ) -> Iterator[str]:
+    def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The cells of one column.
 
         Raises DataError for a row of another width, for quotes that do not match, and for a record of more

@@ -34,9 +34,7 @@ class Series(Facts):
     first: int = 0
 
     @classmethod
-    def of(
-        cls, values: Iterable[Any], kind: str | None = None, times: Any = None, name: str = "values"
-    ) -> Series:
+    def of(cls, values: Iterable[Any], kind: str | None = None, times: Any = None, name: str = "values") -> Series:
         """A series of Python values, an array, or bytes, as if read from a log.
 
         States are strings, or numbers and booleans, labelled as in JSON; None, NaN and the texts that mean a

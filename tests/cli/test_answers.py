@@ -110,7 +110,7 @@ def test_forecast_table(run, line):
     assert rest[0].split()[:2] == ["1", "2026-01-05T07:30:00"]
     assert rest[2] == ""
     assert rest[3].split() == ["model", "leading", "setting", "weight"]
-    assert rest[-1].startswith("rows read: 90; ")
+    assert rest[-1].startswith("rows read: 90")
 
 
 def test_paths_are_joint_continuations(run, line):

@@ -14,10 +14,12 @@ import os
 import re
 import subprocess
 import sys
+import tempfile
 from pathlib import Path
 
 import pytest
 
+import seqmix
 from seqmix.kernels import MODE
 
 ROOT = Path(__file__).parents[2]
@@ -38,13 +40,17 @@ compiled_only = pytest.mark.skipif(MODE == "interpreted", reason="takes minutes 
 
 
 def shell(command: str, **environment: str) -> str:
-    """What a command says, run at the top of the repository; it must succeed. `seqmix` is the one under test."""
+    """What a command says; it must succeed. `seqmix` is the one under test, and examples/ lies in the directory."""
     inherited = {name: value for name, value in os.environ.items() if not name.startswith("SEQMIX_")}
-    done = subprocess.run(
-        ["sh", "-c", f'seqmix() {{ "{sys.executable}" -m seqmix "$@"; }}\n{command}'],
-        cwd=ROOT, env={**inherited, "SEQMIX_KERNELS": MODE, "PYTHONPATH": str(ROOT), **environment},
-        stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, timeout=300,
-    )  # fmt: skip
+    under_test = {"SEQMIX_KERNELS": MODE, "PYTHONPATH": str(Path(seqmix.__file__).parents[1])}
+    # Not the repository itself: there Python would take its sources, whatever is installed.
+    with tempfile.TemporaryDirectory() as place:
+        Path(place, "examples").symlink_to(EXAMPLES)
+        done = subprocess.run(
+            ["sh", "-c", f'seqmix() {{ "{sys.executable}" -m seqmix "$@"; }}\n{command}'],
+            cwd=place, env={**inherited, **under_test, **environment},
+            stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, timeout=300,
+        )  # fmt: skip
     assert done.returncode == 0, done.stdout
     return done.stdout
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
@@ -40,7 +42,7 @@ def make(kind: str, model: type[StatesModel]) -> StatesModel:
 
 def in_pieces(model: StatesModel, rows: Rows, cuts: list[int]) -> np.ndarray:
     edges = [0, *cuts, len(rows)]
-    return np.concatenate([model.absorb(rows[a:b]) for a, b in zip(edges, edges[1:], strict=False)])
+    return np.concatenate([model.absorb(rows[a:b]) for a, b in pairwise(edges)])
 
 
 @pytest.mark.parametrize(("kind", "model"), every())

@@ -98,9 +98,7 @@ def test_reading_agrees_with_the_standard_library():
     epoch = datetime(1970, 1, 1, tzinfo=timezone.utc)
     zones = [timezone(timedelta(minutes=int(minutes))) for minutes in rng.integers(-720, 840, 20)]
     times = [
-        datetime.fromtimestamp(int(second), zones[i % 20]).replace(
-            microsecond=int(rng.integers(10**6)) * (i % 3 > 0)
-        )
+        datetime.fromtimestamp(int(second), zones[i % 20]).replace(microsecond=int(rng.integers(10**6)) * (i % 3 > 0))
         for i, second in enumerate(rng.integers(-(10**10), 10**11, 2000))
     ]
     texts = [time.isoformat() for time in times]
@@ -158,7 +156,7 @@ def test_gaps_become_missing_rows():
     assert series.codes.tolist() == [*range(30), MISSING, MISSING, MISSING, 30, 31, 32]
     steps = np.diff(series.times) // (60 * SECOND)
     assert steps.tolist() == [10] * 33 + [10, 9]
-    assert series.notes[-1] == "missing rows put into 1 gaps of the clock: 3"
+    assert series.notes[-1] == "gaps in the clock: 1; missing rows put into them: 3"
 
 
 def test_a_step_between_two_multiples_is_no_gap():
@@ -185,9 +183,7 @@ def test_times_that_go_back_or_repeat_are_kept():
 
 
 def test_gaps_over_many_chunks_and_at_their_edges():
-    minutes = [
-        m for m in range(0, 200_000, 10) if m not in (40_960, 81_910, 81_920) and not 90_000 <= m < 180_000
-    ]
+    minutes = [m for m in range(0, 200_000, 10) if m not in (40_960, 81_910, 81_920) and not 90_000 <= m < 180_000]
     series = log_of(minutes)
     assert (series.gaps, series.filled, len(series)) == (3, 9003, 20_000)
     assert (np.diff(series.times) == 600 * SECOND).all()

@@ -284,9 +284,7 @@ def test_an_alphabet_goes_on():
     assert first.alphabet.labels == ["a", "b", "c"]
     assert got("1\n2\n", alphabet=first.alphabet) == ["1", "2"]
     assert read(io.BytesIO(b"ab"), alphabet=Alphabet.for_bytes()).codes.tolist() == [97, 98]
-    with pytest.raises(
-        OptionError, match="the alphabet is one of states, so the log cannot be read as bytes"
-    ):
+    with pytest.raises(OptionError, match="the alphabet is one of states, so the log cannot be read as bytes"):
         got("a\n", kind="bytes", alphabet=first.alphabet)
 
 

@@ -73,7 +73,7 @@ def test_times_fill_gaps_and_keep_their_manner():
     series = Series.of("abcdefghijklm", times=times)
     assert (len(series), series.gaps, series.filled) == (15, 1, 2)
     assert series.clock.text(series.times[-1]) == "2024-01-15 00:00+01:00"
-    assert series.notes == ["missing rows put into 1 gaps of the clock: 2"]
+    assert series.notes == ["gaps in the clock: 1; missing rows put into them: 2"]
 
 
 def test_bad_times():
