@@ -1,5 +1,5 @@
 #!/bin/sh
-# A tour of seqmix on the log of a bottling line. Needs `seqmix` in PATH; runs from any directory, writes no file.
+# A tour of seqmix on the logs of a small dairy. Needs `seqmix` in PATH; runs from any directory, writes no file.
 set -eu
 cd "$(dirname "$0")"
 
@@ -31,3 +31,21 @@ gzip -dc weeks.csv.gz | seqmix forecast - --column state --quiet --format jsonl 
 
 show "Alarm codes, one a line: the next one, and the odds of one never seen before (no state)"
 tail -n 300 alarms.txt | seqmix forecast --steps 1 --format csv --quiet
+
+show "Numbers: the temperature of the milk tank, every ten minutes"
+seqmix describe tank.csv --format table
+
+show "The next hour, with the evening milk coming in: does it get warmer than 5 degrees, at least once?"
+seqmix forecast tank.csv --steps 6 --above 5.0 --quiet --format table
+
+show "What such ranges were worth on the last two days"
+seqmix score tank.csv --last 288 --quiet --format table
+
+show "Crates shipped a day: the next two weeks"
+seqmix forecast crates.csv --steps 14 --quiet --format table
+
+show "How good forecasts are up to a week ahead"
+seqmix score crates.csv --steps 7 --quiet --format table
+
+show "Three ways in which the next week may go"
+seqmix forecast crates.csv --steps 7 --paths 3 --quiet --format table

@@ -4,15 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from seqmix.errors import OptionError
 from seqmix.inputs import opened
-from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
+from seqmix.reading import mixture_for
 from seqmix.series import Log, Series
+
+if TYPE_CHECKING:
+    from seqmix.number_forecasting import NumberForecast
 
 UNSEEN = "?"
 """Stands for a state never seen, in joint continuations."""
@@ -71,39 +74,52 @@ def forecast(
     models: Sequence[str] | Sequence[Model] | None = None,
     seed: int = 0,
     paths: int | None = None,
+    period: int | Sequence[int] | None = None,
+    resolution: float | None = None,
+    quantiles: Sequence[float] = (0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95),
+    above: float | Sequence[float] | None = None,
+    below: float | Sequence[float] | None = None,
     **reading: Any,
-) -> Forecast:
-    """The law of each of the next `steps` rows of a log of states or bytes.
+) -> Forecast | NumberForecast:
+    """The law of each of the next `steps` rows of a log: a Forecast of states or bytes, a NumberForecast of numbers.
 
-    log: a path, an open file, a Log, a Series, or values (strings, bytes, ...); reading: column, time, kind,
+    log: a path, an open file, a Log, a Series, or values (strings, bytes, numbers); reading: column, time, kind,
     header, as for `seqmix.read`. models: names or objects, None for all that fit. paths: return so many joint
     continuations too, drawn with `seed`. Raises OptionError or DataError.
+    Numbers only: period, rows per repeat, one or several, instead of what the clock tells; resolution of the grid;
+    quantiles, levels in (0, 1); above, below: thresholds.
     """
     if steps < 1 or (paths is not None and paths < 1):
         raise OptionError("a forecast takes at least one step, and one path")
     with opened(log, **reading) as source:
-        mixture: Mixture | None = None
+        mixture = None
         last: int | None = None
         for rows in source.chunks():
             if mixture is None:
-                mixture = Mixture(models, kind=source.kind, timed=rows.times is not None)
+                mixture = mixture_for(source, rows, models, period, resolution)
             mixture.absorb(rows)
             last = None if rows.times is None else int(rows.times[-1])
         if mixture is None:
-            mixture = Mixture(models, kind=source.kind)
+            mixture = mixture_for(source, None, models, period, resolution)
         # without a cadence, the clock models take the rows ahead to come at the time of the last one
         ahead = None if last is None else [last + (source.cadence or 0) * (i + 1) for i in range(steps)]
+        times = _texts(source, ahead, steps)
+        if source.kind == "numbers":
+            from seqmix.number_forecasting import NumberMixture, number_forecast
+
+            assert isinstance(mixture, NumberMixture)
+            return number_forecast(
+                mixture, steps, times, ahead, seed=seed, paths=paths, quantiles=quantiles, above=above, below=below
+            )
         labels = source.alphabet.labels
         walk = mixture.walk(steps, ahead)
         drawn = None
         if paths is not None:
             codes = mixture.sample(steps, paths, np.random.default_rng(seed), ahead)
             drawn = [[labels[c] if c < mixture.seen else UNSEEN for c in path] for path in codes.tolist()]
-        times = _texts(source, ahead, steps)
-        weights = dict(zip(mixture.names, mixture.weights.now().tolist(), strict=True))
         return Forecast(
             steps=[_step(i + 1, times[i], walk.laws[i], labels) for i in range(steps)],
-            weights=dict(sorted(weights.items(), key=lambda item: -item[1])),
+            weights=mixture.in_force(),
             settings=mixture.settings(),
             exact=walk.exact,
             rows=mixture.rows,

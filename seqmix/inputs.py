@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 from os import PathLike
 from typing import Any
 
@@ -30,7 +31,7 @@ def opened(log: Any, **reading: Any) -> Iterator[Log | Series]:
 class Held:
     """A log read to its end and kept, for questions that must know how many rows there are.
 
-    It takes 1 byte a row of bytes, 4 a row of states, and 8 more with times; a Series is kept as it is.
+    It takes 1 byte a row of bytes, 4 a row of states, 12 of numbers, and 8 more with times; a Series is kept as it is.
     """
 
     def __init__(self, log: Log | Series) -> None:
@@ -38,10 +39,12 @@ class Held:
         self._chunks: list[Rows] = []
         if self._series is None:
             kept = np.uint8 if log.alphabet.fixed else np.int32
-            self._chunks = [Rows(rows.codes.astype(kept), rows.times, rows.first) for rows in log.chunks()]
+            for rows in log.chunks():
+                rows.codes = rows.codes.astype(kept)
+                self._chunks.append(rows)
         self.rows = sum(map(len, self._chunks)) if self._series is None else len(self._series)
 
     def chunks(self) -> Iterator[Rows]:
         if self._series is not None:
             return self._series.chunks()
-        return (Rows(rows.codes.astype(np.int32), rows.times, rows.first) for rows in self._chunks)
+        return (replace(rows, codes=rows.codes.astype(np.int32)) for rows in self._chunks)

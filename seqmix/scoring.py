@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -13,8 +13,13 @@ from seqmix.errors import OptionError, visible
 from seqmix.inputs import Held, opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Ask, Model
+from seqmix.reading import mixture_for
 from seqmix.series import Log, Rows, Series
 from seqmix.series.clock import TimeTextError
+
+if TYPE_CHECKING:
+    from seqmix.mixture.numbers import NumberMixture
+    from seqmix.number_scoring import NumberRun, NumberScore
 
 LAWS_ASKED = 1 << 16
 """Accuracy and Brier score need the whole law of a row. All rows are asked for it until so many masses were
@@ -91,8 +96,11 @@ def score(
     frozen: bool = False,
     models: Sequence[str] | Sequence[Model] | None = None,
     on_row: Callable[[Rows, np.ndarray], None] | None = None,
+    steps: int | None = None,
+    period: int | Sequence[int] | None = None,
+    resolution: float | None = None,
     **reading: Any,
-) -> Score:
+) -> Score | NumberScore:
     """Score held-out rows: each is predicted before it is learned, and its loss in bits added up.
 
     log, models, reading: as for `seqmix.forecast`. Scored are the last N rows or "N%" of them, or "all" rows from
@@ -100,14 +108,24 @@ def score(
     the alphabet of this one) the rows of that log after all of this one. frozen: nothing is learned from scored
     rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError or DataError.
 
-    A number or share of rows keeps the log in memory; the other choices do not.
+    Numbers only: steps scores forecasts so many rows ahead too, from a moving origin; period, resolution: as for
+    `seqmix.forecast`. A number or share of rows keeps the log in memory; the other choices do not.
     """
     with opened(log, **reading) as source:
-        run = _Run(source.kind, frozen, models, on_row)
+        run: _Run | NumberRun
+        if source.kind == "numbers":
+            from seqmix.number_scoring import NumberRun
+
+            def make(rows: Rows | None) -> NumberMixture:
+                return mixture_for(source, rows, models, period, resolution)  # type: ignore[return-value]
+
+            run = NumberRun(make, frozen, on_row, steps, source.cadence)
+        else:
+            run = _Run(source.kind, frozen, models, on_row)
         if against is not None:
             for rows in source.chunks():
                 run.learn(rows)
-            with opened(against, alphabet=source.alphabet, **reading) as other:
+            with opened(against, **{**reading, "kind": source.kind, "alphabet": source.alphabet}) as other:
                 for rows in other.chunks():
                     run.score(rows)
         else:
@@ -182,7 +200,7 @@ class _Run:
         self._laws = _Laws()
         self._rows = 0
         self._bits = 0.0
-        self._before: tuple[np.ndarray, np.ndarray, np.ndarray] | None = None
+        self._before: tuple[np.ndarray, ...] | None = None
 
     def _ready(self, timed: bool) -> Mixture:
         if self._mixture is None:
@@ -213,41 +231,64 @@ class _Run:
     def _mark(self, mixture: Mixture) -> None:
         """Remember where the scored rows start."""
         if self._before is None:
-            self._before = (mixture.model_bits.copy(), mixture.weights.now(), mixture.weights.static_bits())
+            self._before = mark(mixture)
 
     def result(self) -> Score:
         mixture = self._ready(False)
         self._mark(mixture)
         assert self._before is not None
-        bits_before, weights_before, bound = self._before
-        bits = mixture.model_bits - bits_before
-        best = int(np.argmin(bits))
-        a_row = 1.0 / max(self._rows, 1)
-        columns = zip(mixture.names, bits, mixture.weights.costs, weights_before, mixture.weights.now(), strict=True)
-        models = [
-            {
-                "name": name,
-                "bits": float(loss),
-                "bits_per_row": float(loss) * a_row,
-                "prior_cost_bits": float(cost),
-                "weight_before": float(before),
-                "weight_after": float(after),
-            }
-            for name, loss, cost, before, after in columns
-        ]
         laws = self._laws
         return Score(
             rows=self._rows,
             bits=self._bits,
-            bits_per_row=self._bits * a_row,
+            bits_per_row=self._bits / max(self._rows, 1),
             accuracy=laws.hits / laws.total if laws.rows else None,
             brier=laws.squares / laws.total if laws.rows else None,
             law_rows=laws.rows,
-            best_model=mixture.names[best] if self._rows else None,
-            regret_bits=self._bits - float(bits[best]) if self._rows else None,
-            bound_bits=float(bound[best]) if self._rows and not self._frozen else None,
-            models=models,
+            **summed_up(mixture, self._before, self._rows, self._bits, self._frozen),
             baselines=[
-                {"name": name, "bits": loss, "bits_per_row": loss * a_row} for name, loss in self._base_bits.items()
+                {"name": name, "bits": loss, "bits_per_row": loss / max(self._rows, 1)}
+                for name, loss in self._base_bits.items()
             ],
         )
+
+
+def mark(mixture: Mixture) -> tuple[np.ndarray, ...]:
+    """Where a mixture stands at the first scored row: bits, weights, static_bits and rows awake of each model."""
+    weights = mixture.weights
+    return mixture.model_bits.copy(), weights.now(), weights.static_bits(), mixture.awake.copy()
+
+
+def summed_up(mixture: Mixture, before: tuple[np.ndarray, ...], rows: int, bits: float, frozen: bool) -> dict[str, Any]:
+    """best_model, regret_bits, bound_bits and models of a score.
+
+    before: see `mark`; rows, bits: scored since.
+    """
+    bits_before, weights_before, bound, awake_before = before
+    lost = mixture.model_bits - bits_before
+    # a model that slept all along was charged what the mixture lost: it leads nothing
+    best = int(np.argmin(np.where(mixture.awake > awake_before, lost, np.inf)))
+    columns = zip(
+        mixture.names,
+        lost.tolist(),
+        mixture.weights.costs.tolist(),
+        weights_before.tolist(),
+        mixture.weights.now().tolist(),
+        strict=True,
+    )
+    return {
+        "best_model": mixture.names[best] if rows else None,
+        "regret_bits": bits - float(lost[best]) if rows else None,
+        "bound_bits": float(bound[best]) if rows and not frozen else None,
+        "models": [
+            {
+                "name": name,
+                "bits": loss,
+                "bits_per_row": loss / max(rows, 1),
+                "prior_cost_bits": cost,
+                "weight_before": weight_before,
+                "weight_after": weight_after,
+            }
+            for name, loss, cost, weight_before, weight_after in columns
+        ],
+    }

@@ -12,6 +12,7 @@ from seqmix.errors import OptionError
 from seqmix.inputs import opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
+from seqmix.reading import mixture_for
 
 _POINTS = 20  # of the history, where the caller does not say how often
 
@@ -33,11 +34,13 @@ def weights(
     *,
     every: int | None = None,
     models: Sequence[str] | Sequence[Model] | None = None,
+    period: int | Sequence[int] | None = None,
+    resolution: float | None = None,
     **reading: Any,
 ) -> Weights:
     """The weights of all models along a log, every so many rows (None: about twenty times).
 
-    log, models, reading: as for `seqmix.forecast`. Raises OptionError or DataError.
+    log, models, period, resolution, reading: as for `seqmix.forecast`. Raises OptionError or DataError.
     """
     if every is not None and every < 1:
         raise OptionError("weights can be noted every row at the most")
@@ -54,7 +57,7 @@ def weights(
 
         for rows in source.chunks():
             if mixture is None:
-                mixture = Mixture(models, kind=source.kind, timed=rows.times is not None)
+                mixture = mixture_for(source, rows, models, period, resolution)
             done = 0
             while done < len(rows):
                 stop = min(len(rows), done + step - mixture.rows % step)
@@ -69,7 +72,7 @@ def weights(
                     step *= 2
             values += int((rows.codes >= 0).sum())
         if mixture is None:
-            mixture = Mixture(models, kind=source.kind)
+            mixture = mixture_for(source, None, models, period, resolution)
         if not history or history[-1][0] != mixture.rows:
             note(mixture)
     settings = mixture.settings()

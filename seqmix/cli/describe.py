@@ -14,20 +14,23 @@ SHOWN = 20  # states the table names
 
 FIELDS = {
     "name": "log", "kind": "kind", "format": "format", "compression": "compression", "column": "column",
-    "rows": "rows", "missing": "missing rows", "alphabet": "states", "first_time": "first time",
-    "last_time": "last time", "cadence_seconds": "cadence, seconds", "gaps": "gaps",
+    "rows": "rows", "missing": "missing rows", "alphabet": "states", "minimum": "minimum", "maximum": "maximum",
+    "mean": "mean", "median": "median", "resolution": "resolution", "distinct": "different numbers",
+    "first_time": "first time", "last_time": "last time", "cadence_seconds": "cadence, seconds", "gaps": "gaps",
     "filled": "rows put into gaps", "entropy_bits": "entropy, bits a row",
 }  # fmt: skip
+NUMBERS = ("minimum", "maximum", "mean", "median", "resolution")
 
 
 @click.command("describe", cls=Helpful, example="seqmix describe line.csv --column state")
 @reads_log
 @writes_answer
 def command(source: Source, answer: Answer) -> None:
-    """Show how LOG is read: its kind, rows, states, clock and gaps.
+    """Show how LOG is read: its kind, rows, values, clock and gaps.
 
-    What was assumed is listed with the option that changes it. The entropy is that of the rows without their
-    order, so a model that knows the order should stay under it.
+    What was assumed is listed with the option that changes it. The entropy is that of the states without their
+    order, so a model that knows the order should stay under it. The resolution is that of the grid on which the
+    numbers lie.
     """
     import seqmix
 
@@ -58,13 +61,22 @@ def _lines(record: dict[str, Any]) -> Iterator[tuple[str, Any]]:
 
 
 def _write_table(writer: Writer, record: dict[str, Any]) -> None:
-    known = {label: record[field] for field, label in FIELDS.items() if record[field] is not None}
-    writer.fields({label: bits(value) if isinstance(value, float) else str(value) for label, value in known.items()})
-    top = list(record["states"].items())[:SHOWN]
-    present = record["rows"] - record["missing"]
-    writer.table(
-        [("state", "<"), ("rows", ">"), ("share", ">")],
-        [(state, str(count), percent(count / present)) for state, count in top],
-    )
-    hidden = record["alphabet"] - len(top)
-    writer.lines([*([f"and {hidden} rarer states"] if hidden > 0 else []), *record["notes"]])
+    known = {field: record[field] for field in FIELDS if record.get(field) is not None}
+    writer.fields({FIELDS[field]: _shown(field, value) for field, value in known.items()})
+    rest: list[str] = []
+    if "states" in record:
+        top = list(record["states"].items())[:SHOWN]
+        present = record["rows"] - record["missing"]
+        writer.table(
+            [("state", "<"), ("rows", ">"), ("share", ">")],
+            [(state, str(count), percent(count / present)) for state, count in top],
+        )
+        hidden = record["alphabet"] - len(top)
+        rest += [f"and {hidden} rarer states"] if hidden > 0 else []
+    writer.lines([*rest, *record["notes"]])
+
+
+def _shown(field: str, value: Any) -> str:
+    if field in NUMBERS:
+        return f"{value:.12g}"
+    return bits(value) if isinstance(value, float) else str(value)

@@ -58,7 +58,8 @@ def _version(ctx: click.Context, param: click.Parameter, wanted: bool) -> None:
     context_settings={"help_option_names": ["-h", "--help"], "show_default": True},
     no_args_is_help=False,
     epilog="Every option can be set in the environment, as SEQMIX_<COMMAND>_<OPTION>; --as, --models, --seed "
-    "and --format as SEQMIX_<OPTION>, too. The command line wins. "
+    "and --format as SEQMIX_<OPTION>, too. The command line wins. An option that may be repeated takes several "
+    "values there, with blanks between them. "
     "Exit codes: 0 done; 1 the log cannot be read; 2 usage; 74 the answer cannot be written.",
 )
 @click.option(

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import click
 
+from seqmix.cli.number_options import for_numbers, reads_numbers
 from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes_models, writes_answer
 from seqmix.cli.writer import Writer, bits, percent
 
@@ -15,10 +16,14 @@ if TYPE_CHECKING:
 
 @click.command("weights", cls=Helpful, example="seqmix weights line.csv --column state --every 1000")
 @option("--every", type=click.IntRange(min=1), metavar="N", help="Rows between two lines of the history.")
+@reads_numbers
 @takes_models
 @reads_log
 @writes_answer
-def command(source: Source, answer: Answer, models: list[str] | None, every: int | None) -> None:
+def command(
+    source: Source, answer: Answer, models: list[str] | None, every: int | None, period: tuple[int, ...],
+    resolution: float | None,
+) -> None:  # fmt: skip
     """Show which models explain LOG, and how their weights moved.
 
     A weight is the posterior probability of a model after the rows read so far. CSV and JSON Lines carry the
@@ -27,7 +32,8 @@ def command(source: Source, answer: Answer, models: list[str] | None, every: int
     import seqmix
 
     with answer.open() as writer, source.open() as log:
-        _write(writer, seqmix.weights(log, every=every, models=models))
+        numbers = for_numbers(log, period=period, resolution=resolution)
+        _write(writer, seqmix.weights(log, every=every, models=models, **numbers))
 
 
 def _write(writer: Writer, weights: Weights) -> None:

@@ -16,7 +16,8 @@ import sys
 import unicodedata
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager, suppress
-from typing import BinaryIO, Literal
+from math import isfinite
+from typing import Any, BinaryIO, Literal
 
 from seqmix.errors import OutputError, SeqmixError, visible
 
@@ -57,14 +58,19 @@ class Writer:
             self._file.flush()
 
     def record(self, record: Mapping[str, object]) -> None:
-        """One JSON object on a line of its own; keys in the order given, floats that read back the same."""
+        """One JSON object on a line of its own; keys in the order given, floats that read back the same.
+
+        JSON has no word for numbers that are not finite; they become null.
+        """
+        record = finite(record)
         line = json.dumps(record, ensure_ascii=False, allow_nan=False)
         if self._terminal and not line.isprintable():
             line = json.dumps(record, allow_nan=False)
         self.write(line + "\n")
 
     def row(self, cells: Iterable[object]) -> None:
-        """One CSV record; None is an empty cell."""
+        """One CSV record; None is an empty cell, and so is a number that is not finite."""
+        cells = map(finite, cells)
         if self._terminal:
             cells = (visible(cell, sys.maxsize) if isinstance(cell, str) else cell for cell in cells)
         self._csv.writerow(cells)
@@ -115,6 +121,15 @@ def percent(probability: float) -> str:
 def bits(value: float) -> str:
     """A loss, or another number with a fraction, as a table shows it."""
     return f"{value:.3f}"
+
+
+def finite(value: Any) -> Any:
+    """`value`, a cell or the record of an answer, with None for every number that is infinite or NaN."""
+    if isinstance(value, dict):
+        return {key: finite(part) for key, part in value.items()}
+    if isinstance(value, list | tuple):
+        return [finite(part) for part in value]
+    return None if isinstance(value, float) and not isfinite(value) else value
 
 
 @contextmanager

@@ -19,7 +19,7 @@ from seqmix.errors import KernelError
 view: Callable[[Any], memoryview] = memoryview
 """How arrays are handed to a kernel: interpreted, a memoryview gives plain Python numbers, and quickly."""
 
-NAMES = ("contexts_cy", "repeats_cy", "weights_cy")
+NAMES = ("contexts_cy", "numbers_cy", "repeats_cy", "weights_cy")
 _CHOICES = ("compiled", "interpreted")
 
 
@@ -55,5 +55,6 @@ def _load() -> tuple[str, dict[str, ModuleType]]:
 
 MODE, _kernels = _load()
 contexts = _kernels["contexts_cy"]
+numbers = _kernels["numbers_cy"]
 repeats = _kernels["repeats_cy"]
 weights = _kernels["weights_cy"]

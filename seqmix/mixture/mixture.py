@@ -12,9 +12,9 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.errors import OptionError
+from seqmix.keep import Kept
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
-from seqmix.models.keep import Kept
 from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
@@ -29,7 +29,7 @@ class Mixture(Kept):
     Codes are numbered in order of first appearance; a byte is its own code.
     """
 
-    kept = ("bits", "model_bits", "rows", "awake", "seen")
+    kept: tuple[str, ...] = ("bits", "model_bits", "rows", "awake", "asleep", "seen")
 
     def __init__(
         self,
@@ -43,7 +43,7 @@ class Mixture(Kept):
         given = [model for model in models or () if not isinstance(model, str)]
         if names and given:
             raise OptionError("give the models by name or as objects, not both")
-        self.models: list[Model] = [*given] if given else [*registry.make(kind, timed, names)]
+        self.models: list[Model] = [*given] if given else [*self._make(kind, timed, names)]
         if len(set(self.names)) < len(self.models):
             raise OptionError("two models have the same name")
         self.weights = Weights([model.prior_cost for model in self.models], rates)
@@ -53,6 +53,10 @@ class Mixture(Kept):
         self.bits = 0.0
         self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
         self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows predicted by each model itself
+        self.asleep = np.zeros(len(self.models), dtype=bool)  # at the last row
+
+    def _make(self, kind: str, timed: bool, names: list[str] | None) -> Sequence[Model]:
+        return registry.make(kind, timed, names)
 
     def parts(self) -> dict[str, Kept]:
         return {"weights": self.weights}
@@ -99,13 +103,14 @@ class Mixture(Kept):
         _share_out(one, len(self.models), len(rows))
         want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
         asleep = np.isnan(losses)
+        self.asleep = asleep[-1]
         bits, before = self.weights.mix(losses, want, frozen)
         bits[rows.codes < 0] = 0.0
         if ask is not None:
             ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
         self.rows += len(rows)
-        self.bits += float(bits.sum())
-        self.model_bits += np.where(asleep, bits[:, None], losses).sum(axis=0)
+        self.bits += float(np.nansum(bits))
+        self.model_bits += np.nansum(np.where(asleep, bits[:, None], losses), axis=0)
         self.awake += (~asleep).sum(axis=0)
         return bits
 
@@ -118,10 +123,17 @@ class Mixture(Kept):
             raise ValueError("codes must number the states in order of first appearance")
         self.seen = int(top[-1]) + 1
 
+    def in_force(self) -> dict[str, float]:
+        """Weight of each model in a forecast from here, heaviest first; they add to 1, and one asleep has none."""
+        weights = self.weights.of(~self.asleep) if not self.asleep.all() else self.weights.now()
+        order = np.argsort(-weights, kind="stable")
+        return {self.names[i]: float(weights[i]) for i in order}
+
     def predict(self, time: int | None = None) -> StatesLaw:
         """Law of the next row, at `time` (microseconds) where the log has times."""
-        weighed = zip(self.weights.now().tolist(), (model.predict(time) for model in self.models), strict=True)
-        laws = [(weight, law) for weight, law in weighed if law is not None]
+        every = [model.predict(time) for model in self.models]
+        weights = self.weights.of(np.array([law is not None for law in every]))
+        laws = [(weight, law) for weight, law in zip(weights.tolist(), every, strict=True) if law is not None]
         masses = np.zeros(max(len(law.masses) for _, law in laws))
         for weight, law in laws:
             masses[: len(law.masses)] += weight * law.masses

@@ -11,9 +11,9 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.keep import Kept
 from seqmix.kernels import view
 from seqmix.kernels import weights as kernel
-from seqmix.models.keep import Kept
 
 Floats = npt.NDArray[np.float64]
 
@@ -24,7 +24,7 @@ RATES = (0.05, 0.005, 0.0005)
 class Weights(Kept):
     """Weights of models with prior 2^-cost, normalised; `rates` = () is static Bayes alone."""
 
-    kept = ("behind", "shares", "camps")
+    kept = ("prior", "costs", "behind", "shares", "camps")
 
     def __init__(self, costs: Sequence[float] | Floats, rates: Sequence[float] = RATES) -> None:
         """costs (models,): prior costs in bits, up to a constant."""
@@ -63,9 +63,35 @@ class Weights(Kept):
 
     def now(self) -> Floats:
         """Weights (models,) after all rows so far; they add to 1."""
+        return self.of(np.ones(len(self.behind), dtype=bool))
+
+    def of(self, awake: npt.NDArray[np.bool_]) -> Floats:
+        """The same where only some models are awake: in every camp, these share its weight; the others have none."""
         camps = np.exp2(-self.camps)
-        weights = camps[0] * np.exp2(-self.behind) + camps[1:] @ self.shares
+        static = np.where(awake, np.exp2(-(self.behind - self.behind[awake].min())), 0.0)
+        shares = np.where(awake, self.shares, 0.0)
+        weights = camps[0] * static / static.sum() + camps[1:] @ (shares / shares.sum(axis=1, keepdims=True))
         return weights / weights.sum()
+
+    def ahead(self, steps: int) -> Floats:
+        """Weights (steps, models) of the models that will be in force at each of the next rows.
+
+        Static Bayes holds on to its weights; under fixed share a model may take over at every row between.
+        """
+        camps = np.exp2(-self.camps)
+        held = (1.0 - self._rates) ** np.arange(steps)[:, None]  # (steps, rates)
+        weights = camps[0] * np.exp2(-self.behind) + (held * camps[1:]) @ self.shares
+        weights += ((1.0 - held) @ camps[1:])[:, None] * self.prior
+        return weights / weights.sum(axis=1, keepdims=True)
+
+    def keep(self, which: npt.NDArray[np.intp]) -> None:
+        """Forget all models but these; their weights are made to add to 1 again."""
+        behind = self.behind[which] - self.behind[which].min()
+        self.behind = behind + np.log2(np.exp2(-behind).sum())
+        shares = self.shares[:, which]
+        self.shares = np.ascontiguousarray(shares / shares.sum(axis=1, keepdims=True))
+        self.prior = self.prior[which] / self.prior[which].sum()
+        self.costs = -np.log2(self.prior)
 
     def static_bits(self) -> Floats:
         """Minus log2 of the weight of each model within the static half, (models,), that half's own weight in it.

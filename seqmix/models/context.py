@@ -7,11 +7,11 @@ from collections.abc import Callable, Sequence
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.keep import Kept
 from seqmix.kernels import contexts as kernel
 from seqmix.kernels import view
 from seqmix.models.digits import BYTES, SIDES, STATES, Digits
 from seqmix.models.history import Codes, Fork, Keys, Past
-from seqmix.models.keep import Kept
 from seqmix.models.protocol import Floats, Setting
 
 Contexts = Callable[[Past], Sequence[Keys]]

@@ -11,7 +11,7 @@ from functools import cached_property
 import numpy as np
 import numpy.typing as npt
 
-from seqmix.models.keep import Kept
+from seqmix.keep import Kept
 
 Codes = npt.NDArray[np.int32]
 Keys = npt.NDArray[np.uint64]

@@ -5,10 +5,10 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.keep import Kept
 from seqmix.kernels import repeats as kernel
 from seqmix.kernels import view
 from seqmix.models.history import ChunkPast, Codes, Fork, History, Past
-from seqmix.models.keep import Kept
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
 TRUSTS = 64  # 4 x min(length, 15) + min(wrong guesses lately, 3)

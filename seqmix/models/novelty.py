@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from seqmix.models.keep import Kept
+from seqmix.keep import Kept
 
 
 class Novelty(Kept):

@@ -9,13 +9,13 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.keep import Kept
 from seqmix.kernels import contexts as kernel
 from seqmix.kernels import view
 from seqmix.models.clock import DAY, MINUTE, phase
 from seqmix.models.context import ASK, Contexts, Table
 from seqmix.models.dwell import stages
 from seqmix.models.history import ChunkPast, Codes, Fork, History, Keys, Past, stir
-from seqmix.models.keep import Kept
 from seqmix.models.match import TRUSTS, Follower
 from seqmix.models.protocol import Floats, Setting, StatesModel
 

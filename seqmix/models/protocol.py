@@ -14,9 +14,9 @@ from typing import Any, Protocol, runtime_checkable
 import numpy as np
 import numpy.typing as npt
 
+from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.history import Codes, Fork, History, Past
-from seqmix.models.keep import Kept
 from seqmix.models.novelty import Novelty
 from seqmix.series.rows import Rows
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from ..errors import OptionError, visible
 from .clock import is_time
-from .kinds import are_numbers, is_missing, is_number
+from .kinds import are_numbers, is_missing, number_of
 
 Wanted = str | int | None
 """A column asked for: its name, its number from 1, or None for the one that suggests itself."""
@@ -101,7 +101,7 @@ def has_header(rows: Sequence[Sequence[str]], wanted: Sequence[Wanted]) -> bool:
     if not rows:
         return False
     first = [cell.strip() for cell in rows[0]]
-    values = any(is_missing(cell) or is_number(cell) or is_time(cell) for cell in first)
+    values = any(is_missing(cell) or number_of(cell) is not None or is_time(cell) for cell in first)
     if values or len(set(first)) < len(first):
         return False
     if any(name in first for name in wanted):

@@ -13,7 +13,7 @@ class Facts:
     """What a log is, and how it was read.
 
     name: as shown in messages ("line.csv", "<stdin>").
-    kind: "states" or "bytes". alphabet: its labels.
+    kind: "states", "numbers" or "bytes". alphabet: its labels, none of numbers.
     format: "lines", "csv", "tsv", "jsonl", "bytes" or, for values from Python, "values".
     column, time_column: name, or without a header the number from 1; None without columns, or without times.
     separator: of the columns. header: whether the first line names them.

@@ -40,9 +40,9 @@ class GapFiller:
 
     def fill(self, pieces: Iterable[Piece]) -> Iterator[Piece]:
         """The rows of `pieces` with missing rows put in, `CHUNK` at a time or fewer."""
-        for codes, times in pieces:
+        for held, times in pieces:
             if times is None or not len(times):
-                yield codes, times
+                yield held, times
                 continue
             before = int(times[0]) - 1 if self._last is None else self._last
             steps = np.diff(times, prepend=before)
@@ -50,9 +50,9 @@ class GapFiller:
             self._last = int(times[-1])
             missing = self._missing(steps)
             if missing is None:
-                yield codes, times
+                yield held, times
             else:
-                yield from self._spread(codes, times, missing)
+                yield from self._spread(held, times, missing)
 
     def notes(self) -> list[str]:
         """What was met, a sentence each."""
@@ -79,12 +79,13 @@ class GapFiller:
         self.filled += int(missing.sum())
         return missing if missing.any() else None
 
-    def _spread(self, codes: np.ndarray, times: np.ndarray, missing: np.ndarray) -> Iterator[Piece]:
+    def _spread(self, held: np.ndarray, times: np.ndarray, missing: np.ndarray) -> Iterator[Piece]:
         """The rows at their new places, computed a chunk at a time: one gap can be longer than the log."""
-        places = np.arange(len(codes)) + np.cumsum(missing)
+        blank = held.dtype.type(np.nan if held.dtype == np.float64 else MISSING)
+        places = np.arange(len(held)) + np.cumsum(missing)
         for start in range(0, int(places[-1]) + 1, CHUNK):
             rows = np.arange(start, min(start + CHUNK, int(places[-1]) + 1))
             following = np.searchsorted(places, rows)
             steps_back = places[following] - rows
-            new_codes = np.where(steps_back == 0, codes[following], MISSING).astype(np.int32)
-            yield new_codes, times[following] - steps_back * self.cadence
+            spread = np.where(steps_back == 0, held[following], blank)
+            yield spread, times[following] - steps_back * self.cadence

@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-import re
 from collections.abc import Iterable
+from math import isfinite
 
 KINDS = ("states", "numbers", "bytes")
 
-NO_NUMBERS = "{}: numbers are not supported yet; --as states takes every distinct value as a state"
-
 _MISSING = frozenset(("", "na", "nan", "null"))
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 
 
 class NumberText(str):
@@ -33,12 +30,30 @@ def is_missing(cell: str) -> bool:
     return cell.strip().lower() in _MISSING
 
 
-def is_number(cell: str) -> bool:
-    """Whether a cell is a decimal number. "inf" is not."""
-    return _NUMBER.fullmatch(cell.strip()) is not None
+def number_of(cell: str) -> float | None:
+    """The decimal number in a cell, perhaps infinite or NaN; None if there is none.
+
+    What float() reads, save 1_000 and digits other than 0 to 9.
+    """
+    text = cell.strip()
+    if not text.isascii() or "_" in text:
+        return None
+    try:
+        return float(text)
+    except ValueError:
+        return None
 
 
-def are_numbers(cells: Iterable[str], written_as: type[str] = str) -> bool:
-    """Whether there is a value among `cells` and all values are numbers, each an instance of `written_as`."""
-    values = {cell for cell in cells if not is_missing(cell)}
-    return bool(values) and all(isinstance(cell, written_as) and is_number(cell) for cell in values)
+def are_numbers(cells: Iterable[str], typed: bool = False) -> bool:
+    """Whether there is a finite number among `cells` and nothing but numbers and missing values.
+
+    typed: a number is written as one, a `NumberText`; "1" is a text.
+    """
+    finite = False
+    for cell in cells:
+        if not is_missing(cell):
+            number = None if typed and not isinstance(cell, NumberText) else number_of(cell)
+            if number is None:
+                return False
+            finite = finite or isfinite(number)
+    return finite

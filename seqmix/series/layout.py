@@ -12,13 +12,24 @@ from .text import Text
 
 @dataclass
 class Beside:
-    """What stands beside the cells read so far: their times, if there are any, and the line of each row.
+    """What stands beside the cells that are being taken: their times, if there are any, and their lines.
 
-    Whoever takes the cells empties both lists when done with them.
+    times, lines: of each cell; no lines where each line holds one row. before: lines before these cells, there.
     """
 
     times: list[str] = field(default_factory=list)
     lines: list[int] = field(default_factory=list)
+    before: int = 0
+
+    def line(self, index: int) -> int:
+        """The line, from 1, of one of the cells."""
+        return self.lines[index] if self.lines else self.before + index + 1
+
+    def done(self, cells: int) -> None:
+        """So many cells were taken; others follow."""
+        self.times.clear()
+        self.lines.clear()
+        self.before += cells
 
 
 class Layout(Protocol):

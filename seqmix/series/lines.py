@@ -31,5 +31,6 @@ class Lines:
 
     def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The lines after the header."""
+        beside.before = len(sample.names or ())
         lines = chain.from_iterable(map(split_lines, text.lines()))
-        return islice(lines, len(sample.names or ()), None)
+        return islice(lines, beside.before, None)

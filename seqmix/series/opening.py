@@ -13,10 +13,11 @@ from .clock import Clock, TimeTextError, is_time
 from .columns import Options, Wanted
 from .gaps import find_cadence
 from .jsonlines import JsonLines
-from .kinds import KINDS, NO_NUMBERS, NumberText, are_numbers, is_text
+from .kinds import KINDS, are_numbers, is_text
 from .layout import Beside, Layout
 from .lines import Lines
 from .log import Log
+from .numbers import NumberError, Numbers
 from .rows import CHUNK, Piece
 from .separated import Separated
 from .source import LogFile, Source
@@ -38,9 +39,10 @@ def open_log(
     `Log.notes` says what was assumed. All may be compressed: gzip and zstandard are seen by content, brotli
     by the ending .br.
 
-    column, time: name or number from 1 of the columns of values and times. kind: "states" or "bytes".
+    column, time: name or number from 1 of the columns of values and times. kind: "states", "numbers" or "bytes".
     header: whether the first line names the columns. alphabet: of another log, to go on with its states.
-    Blank cells, NA, NaN and null are missing rows; gaps of a log with a regular clock become such rows.
+    Blank cells, NA, NaN and null are missing rows, and so are infinite numbers; gaps of a log with a regular
+    clock become such rows. A column whose first `CHUNK` values are all numbers is one of numbers.
     Blanks around cells do not count, save in JSON strings.
 
     Caps: 16 GiB out of a compressed log, 16 MiB a line or record, 1,048,576 states.
@@ -48,6 +50,8 @@ def open_log(
     """
     if alphabet is not None:
         known = "bytes" if alphabet.fixed else "states"
+        if kind == "numbers" and not len(alphabet):
+            known = "numbers"
         if kind not in (None, known):
             raise OptionError(f"the alphabet is one of {known}, so the log cannot be read as {kind}")
         kind = known
@@ -55,8 +59,6 @@ def open_log(
         raise OptionError(f"no kind '{visible(str(kind))}'; the kinds are {', '.join(KINDS)}")
     source = Source(log)
     try:
-        if kind == "numbers":
-            raise OptionError(NO_NUMBERS.format(visible(source.name)))
         options = Options(column, time, kind, header)
         text = Text(source)
         if _as_bytes(text, options):
@@ -96,16 +98,18 @@ def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet)
     notes: list[str] = []
     sample = layout.sample(name, options, notes)
     value, when = sample.choose(options.column, options.time, notes)
-    if options.kind is None and are_numbers(sample.columns[value], NumberText if layout.typed else str):
-        column = "" if sample.single else f"column {sample.describe(value)} of "
-        raise OptionError(NO_NUMBERS.format(column + visible(name)))
+    kind = options.kind or ("numbers" if are_numbers(sample.columns[value], layout.typed) else "states")
     times = [] if when is None else sample.columns[when]
     clock = Clock.like(next(filter(is_time, times), ""))
     beside = Beside()
-    codes = Codes(alphabet, name, strip=not layout.typed)
+    cells = layout.cells(text, sample, value, when, beside)
+    if kind == "numbers":
+        held = _numbers(cells, beside, name, value, notes)
+    else:
+        held = _codes(cells, Codes(alphabet, name, strip=not layout.typed))
     return Log(
         name=name,
-        kind="states",
+        kind=kind,
         alphabet=alphabet,
         format=layout.name,
         column=sample.label(value),
@@ -116,7 +120,7 @@ def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet)
         clock=clock,
         cadence=_cadence(clock, times),
         notes=notes,
-        pieces=_pieces(layout.cells(text, sample, value, when, beside), beside, codes, clock, when),
+        pieces=_pieces(held, beside, name, clock, when),
         close=source.close,
     )
 
@@ -129,17 +133,34 @@ def _cadence(clock: Clock, times: Sequence[str]) -> int | None:
         return find_cadence(clock.parse(times[: error.index]))
 
 
-def _pieces(cells: Iterator[str], beside: Beside, codes: Codes, clock: Clock, when: int | None) -> Iterator[Piece]:
-    """`CHUNK` rows at a time, so that the alphabet at a row does not depend on how the bytes arrive."""
+def _codes(cells: Iterator[str], codes: Codes) -> Iterator[np.ndarray]:
+    """(n,) int32, `CHUNK` rows at a time, so that the alphabet at a row does not depend on how the bytes arrive."""
     coded = map(codes.__getitem__, cells)
     while len(batch := np.fromiter(islice(coded, CHUNK), np.int32)):
+        yield batch
+
+
+def _numbers(cells: Iterator[str], beside: Beside, name: str, column: int, notes: list[str]) -> Iterator[np.ndarray]:
+    """(n,) float64, `CHUNK` rows at a time; adds to `notes` what was met, at the end."""
+    numbers = Numbers()
+    while batch := list(islice(cells, CHUNK)):
+        try:
+            yield numbers.parse(batch)
+        except NumberError as error:
+            message = f"{error}: '{visible(batch[error.index])}'; --as states takes every distinct value as a state"
+            raise DataError(message, name, beside.line(error.index), column + 1) from None
+    notes += numbers.notes()
+
+
+def _pieces(held: Iterator[np.ndarray], beside: Beside, name: str, clock: Clock, when: int | None) -> Iterator[Piece]:
+    """Batches of codes or numbers with their times."""
+    for batch in held:
         times = None
         if when is not None:
             try:
                 times = clock.parse(beside.times)
             except TimeTextError as error:
                 message = f"{error.reason}: '{visible(beside.times[error.index])}'"
-                raise DataError(message, codes.name, beside.lines[error.index], when + 1) from None
-        beside.times.clear()
-        beside.lines.clear()
+                raise DataError(message, name, beside.line(error.index), when + 1) from None
+        beside.done(len(batch))
         yield batch, times

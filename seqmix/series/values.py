@@ -15,6 +15,8 @@ from .rows import MISSING
 _LATEST = int(np.datetime64("9999-12-31T23:59:59", "us").astype(np.int64))
 _EARLIEST = int(np.datetime64("0001-01-01", "us").astype(np.int64))
 
+_PLAIN = {float, int, type(None), np.float64, np.int64}
+
 
 def cell_text(value: Any) -> str:
     """A value as the text of a cell: strings as they are, numbers and booleans as in JSON.
@@ -32,6 +34,23 @@ def cell_text(value: Any) -> str:
     if isinstance(value, (int, float)):
         return NumberText(value)
     raise TypeError(f"{type(value).__name__} is neither text nor a number nor a boolean")
+
+
+def plain_numbers(values: np.ndarray | list[Any]) -> np.ndarray | None:
+    """(n,) float64 of an array (n,) of numbers, or a list of floats, integers and None; None for anything else."""
+    if isinstance(values, np.ndarray):
+        if values.dtype.kind not in "fiu":
+            return None
+        # Another float is the number that it prints, not the double nearest to it.
+        texts = values.dtype.kind == "f" and values.dtype != np.float64
+        return (values.astype(str) if texts else values).astype(np.float64)
+    types = set(map(type, values))
+    if not types or types == {type(None)} or not types <= _PLAIN:
+        return None
+    try:
+        return np.array(values, dtype=np.float64)
+    except OverflowError:  # an integer beyond all floats
+        return None
 
 
 def byte_codes(values: Iterable[Any], name: str) -> np.ndarray:

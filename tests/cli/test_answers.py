@@ -6,6 +6,7 @@ import csv
 import io
 import json
 import os
+import re
 import stat
 from itertools import groupby
 
@@ -190,6 +191,33 @@ def test_describe_counts_states(run, line):
     assert ("cadence_seconds", "60.0") in pairs
     table = run("describe", line, "--format", "table").out
     assert "cadence, seconds" in table
+
+
+def test_describe_measures_numbers(run):
+    log = b"20.5\n\n21.0\n" * 3 + b"22.5\ninf\n"
+    record = json.loads(run("describe", "--format", "jsonl", stdin=log).out)
+    assert list(record) == [
+        "name", "kind", "format", "compression", "column", "rows", "missing", "minimum", "maximum", "mean", "median",
+        "resolution", "distinct", "first_time", "last_time", "cadence_seconds", "gaps", "filled", "notes",
+    ]  # fmt: skip
+    assert (record["kind"], record["rows"], record["missing"]) == ("numbers", 11, 4)
+    assert (record["minimum"], record["maximum"], record["mean"], record["median"]) == (20.5, 22.5, 21, 21)
+    assert (record["resolution"], record["distinct"]) == (0.1, 3)
+    assert record["notes"] == ["numbers that are not finite, taken as missing: 1"]
+    table = run("describe", "--format", "table", stdin=log).out
+    assert re.search("^mean +21$", table, re.M)
+    assert "states" not in table
+
+
+def test_describe_of_no_numbers_and_of_many(run):
+    measures = ("minimum", "maximum", "mean", "median", "resolution", "distinct")
+    record = json.loads(run("describe", "--as", "numbers", "--format", "jsonl", stdin=b"NA\n").out)
+    assert [record[name] for name in measures] == [None, None, None, None, None, 0]
+    log = "".join(f"{row % 1001}e300\n" for row in range(5000)).encode()
+    record = json.loads(run("describe", "--format", "jsonl", stdin=log).out)
+    assert [record[name] for name in measures[:2]] == [0, 1e303]
+    assert record["mean"] == pytest.approx(499.502e300)
+    assert record["distinct"] is None
 
 
 def test_models_named_are_the_models_mixed(run, line):

@@ -41,10 +41,10 @@ def test_a_bad_row_leaves_no_answer(run, line, tmp_path, monkeypatch, name):
 
 
 @pytest.mark.parametrize("name", READERS)
-def test_numbers_are_told_apart(run, name):
-    ended = run(name, stdin=b"1.5\n2.5\n" * 20)
-    hint = "numbers are not supported yet; --as states takes every distinct value as a state"
-    assert ended == Ended(2, "", f"seqmix: <stdin>: {hint}\n")
+def test_text_in_a_log_of_numbers(run, name):
+    ended = run(name, "--as", "numbers", stdin=b"1.5\n2.5\nj\x1bm\n")
+    hint = "not a number: 'j\\x1bm'; --as states takes every distinct value as a state"
+    assert ended == Ended(1, "", f"seqmix: <stdin>:3:1: {hint}\n")
 
 
 @pytest.mark.parametrize("name", ["forecast", "score", "weights"])

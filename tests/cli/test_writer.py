@@ -54,9 +54,16 @@ def test_a_terminal_gets_printable_text_only(monkeypatch, format, state):
     assert all(line.isprintable() for line in file.getvalue().decode().split("\n"))
 
 
-def test_json_has_no_nan_or_infinity():
-    with pytest.raises(ValueError):
-        Writer(io.BytesIO(), "x", "jsonl").record({"bits": float("inf")})
+@pytest.mark.parametrize("number", [float("inf"), float("-inf"), float("nan")])
+def test_numbers_that_are_not_finite_are_null_or_empty(number):
+    file = io.BytesIO()
+    Writer(file, "x", "jsonl").record(
+        {"bits": number, "parts": [{"bits": number}], "paths": [[1.5, number]], "rows": 2}
+    )
+    assert file.getvalue() == b'{"bits": null, "parts": [{"bits": null}], "paths": [[1.5, null]], "rows": 2}\n'
+    file = io.BytesIO()
+    Writer(file, "x", "csv").row(("mixture", number, 2))
+    assert file.getvalue() == b"mixture,,2\n"
 
 
 def test_the_look_of_a_table():

@@ -4,6 +4,7 @@ import gzip
 import io
 
 import brotli
+import numpy as np
 import zstandard
 from hypothesis import example, given, settings
 from hypothesis import strategies as st
@@ -20,6 +21,12 @@ pieces = st.sampled_from(
         "fill",
         "1",
         "2.5",
+        "-0.1e-3",
+        "12.658579999999999",
+        "1_0",
+        "inf",
+        "-nan",
+        "NaN",
         "NA",
         "",
         " ",
@@ -86,7 +93,12 @@ def outcome(file, **asked):
         series = read(file, **asked)
     except SeqmixError as error:
         return type(error).__name__, str(error).replace(str(getattr(file, "name", "<file>")), "<file>")
-    labels = [None if code == MISSING else series.alphabet.labels[code] for code in series.codes]
+    if series.kind == "numbers":
+        assert (np.isnan(series.values) == (series.codes == MISSING)).all()
+        assert np.isfinite(series.values[series.codes == 0]).all()
+        labels = list(map(str, series.values))
+    else:
+        labels = [None if code == MISSING else series.alphabet.labels[code] for code in series.codes]
     times = None if series.times is None else [series.clock.text(time) for time in series.times]
     return (
         series.kind,

@@ -21,6 +21,7 @@ import pytest
 
 import seqmix
 from seqmix.kernels import MODE
+from seqmix.models import registry
 
 ROOT = Path(__file__).parents[2]
 EXAMPLES = ROOT / "examples"
@@ -28,9 +29,11 @@ PYTHON_GUIDE = ROOT / "docs" / "python.md"
 PAGES = (ROOT / "README.md", *sorted((ROOT / "docs").glob("*.md")))
 
 SAMPLES = {
-    "line.csv": ("--days", "0.5"),
-    "weeks.csv.gz": ("--every", "60", "--days", "18.5"),
-    "alarms.txt": ("--codes",),
+    "line.csv": ("make_line.py", "--days", "0.5"),
+    "weeks.csv.gz": ("make_line.py", "--every", "60", "--days", "18.5"),
+    "alarms.txt": ("make_line.py", "--codes"),
+    "tank.csv": ("make_tank.py",),
+    "crates.csv": ("make_tank.py", "--crates"),
 }
 
 SESSION = re.compile(r"```console\n\$ (?P<command>.*)\n(?P<shown>(?:.*\n)*?)```\n")
@@ -69,9 +72,10 @@ def run_snippet(code: str, names: dict[str, object]) -> str:
 
 
 @pytest.mark.parametrize("name", SAMPLES)
-def test_samples_are_what_the_script_writes(name: str, tmp_path: Path) -> None:
+def test_samples_are_what_the_scripts_write(name: str, tmp_path: Path) -> None:
     made, kept = tmp_path / name, EXAMPLES / name
-    subprocess.run([sys.executable, EXAMPLES / "make_line.py", *SAMPLES[name], made], check=True)
+    script, *options = SAMPLES[name]
+    subprocess.run([sys.executable, EXAMPLES / script, *options, made], check=True)
     open_it = gzip.open if name.endswith(".gz") else open
     with open_it(made, "rb") as new, open_it(kept, "rb") as old:
         assert new.read() == old.read()
@@ -109,6 +113,12 @@ def test_snippets_print_what_they_are_said_to(monkeypatch: pytest.MonkeyPatch) -
     assert found
     for snippet in found:
         assert run_snippet(snippet["code"], names) == (snippet["shown"] or ""), snippet["code"]
+
+
+@pytest.mark.parametrize("model", registry.entries(), ids=lambda model: model.name)
+def test_methods_tell_of_every_model_and_its_cost(model: registry.Entry) -> None:
+    methods = (ROOT / "docs" / "methods.md").read_text(encoding="utf-8")
+    assert re.search(rf"^### {model.name} - cost {model.prior_cost_bits:g}\b", methods, re.MULTILINE)
 
 
 @pytest.mark.parametrize("page", PAGES, ids=lambda page: page.name)

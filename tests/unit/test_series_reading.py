@@ -2,6 +2,7 @@
 
 import io
 
+import numpy as np
 import pytest
 
 from seqmix.errors import DataError, OptionError, SeqmixError
@@ -164,28 +165,80 @@ def test_json_values():
     assert got('"\\ud800"\n') == ["\\ud800"]
 
 
+NUMERIC = [
+    ("1\n2.5\nNA\n-3e4\n", {}, [1, 2.5, None, -3e4]),
+    ("\n +.5 \n7.\n", {}, [None, 0.5, 7]),
+    ("row;x\na;1\nb;\nc;2\n", {"column": "x"}, [1, None, 2]),
+    ("time,level\n2024-01-01,12.50\n2024-01-02,null\n", {}, [12.5, None]),
+    ('{"x": 1}\n{"y": 2}\n{"x": 1e-300}\n{"x": NaN}\n', {"column": "x"}, [1, None, 1e-300, None]),
+    ('{"x": "1"}\n{"x": 2}\n', {"column": "x", "kind": "numbers"}, [1, 2]),
+    ("12\n12.658579999999999\n1e300\n", {"kind": "numbers"}, [12, 12.658579999999999, 1e300]),
+]
+
+
+@pytest.mark.parametrize(("text", "options", "numbers"), NUMERIC)
+def test_numbers(text, options, numbers):
+    series = read(io.BytesIO(text.encode()), **options)
+    assert (series.kind, len(series.alphabet)) == ("numbers", 0)
+    assert (series.values.dtype, series.codes.dtype) == (np.float64, np.int32)
+    assert [None if np.isnan(value) else value for value in series.values] == numbers
+    assert series.codes.tolist() == [MISSING if number is None else 0 for number in numbers]
+    states = read(io.BytesIO(text.encode()), **{**options, "kind": "states"})
+    assert (states.kind, states.values) == ("states", None)
+    assert (states.codes == MISSING).tolist() == (series.codes == MISSING).tolist()
+
+
+@pytest.mark.parametrize("word", ["inf", "-INF", "+Infinity", "-nan", "1e999", "-1e999"])
+def test_numbers_that_are_not_finite_are_missing(word):
+    series = read(io.BytesIO(f"1\n{word}\n2\nNA\n".encode()))
+    assert series.codes.tolist() == [0, MISSING, 0, MISSING]
+    assert np.isnan(series.values).tolist() == [False, True, False, True]
+    noted = [] if word == "-nan" else ["numbers that are not finite, taken as missing: 1"]
+    assert series.notes == noted
+    assert read(io.BytesIO(f"{word}\n".encode())).kind == "states"
+
+
 @pytest.mark.parametrize(
-    ("text", "subject"),
+    "text", ["1\nx\n", "1_000\n2\n", "１\n2\n", "0x10\n1\n", "1,5\n2,5\n", '"1"\n"2"\n', "1\nNone\n"]
+)
+def test_what_is_not_all_numbers_is_states(text):
+    options = {"column": 2, "kind": "states"} if "," in text else {}
+    assert read(io.BytesIO(text.encode()), **options).kind == "states"
+
+
+def test_numbers_in_a_log_of_whole_chunks_and_more():
+    values = np.round(np.random.default_rng(0).normal(size=10_000), 3)
+    text = "\n".join(map(str, values)).encode()
+    series = read(io.BytesIO(text))
+    assert series.values.tolist() == values.tolist()
+    chunks = list(open_log(io.BytesIO(text)).chunks())
+    assert [len(rows.values) for rows in chunks] == [4096, 4096, 10_000 - 8192]
+    assert all(rows.cells is None for rows in chunks)
+
+
+@pytest.mark.parametrize(
+    ("text", "options", "message"),
     [
-        ("1\n2.5\nNA\n-3e4\n", ""),
-        ("row;x\na;1\nb;2\n", "column 2 'x' of "),
-        ('{"x": 1}\n{"x": 2}\n', "column 1 'x' of "),
+        ("1\n" * 5000 + "\nj\x1b[2Jm\n", {}, "5002:1: not a number: 'j\\x1b[2Jm'"),
+        ("level\n" + "1\n" * 5000 + "x\n", {"column": "level"}, "5002:1: not a number: 'x'"),
+        ("a\n", {"kind": "numbers"}, "1:1: not a number: 'a'"),
+        ("1\n\n1_000\n", {"kind": "numbers"}, "3:1: not a number: '1_000'"),
+        ("1\n２\n", {"kind": "numbers"}, "2:1: not a number: '２'"),
+        (TIMED.replace("cap", "7"), {"kind": "numbers"}, "2:2: not a number: 'fill'"),
+        ('x,y\n"\n",1\nb,2\n\nc,ok\n', {"column": "y", "kind": "numbers"}, "6:2: not a number: 'ok'"),
+        ('{"x": 1}\n{"x": true}\n', {"kind": "numbers"}, "2:1: not a number: 'true'"),
     ],
 )
-def test_numbers_are_refused_with_what_to_do(text, subject):
-    options = {"column": "x"} if subject else {}
-    with pytest.raises(OptionError) as error:
-        got(text, **options)
-    advice = "numbers are not supported yet; --as states takes every distinct value as a state"
-    assert str(error.value) == f"{subject}<file>: {advice}"
-    assert got(text, kind="states", **options)
+def test_text_in_a_log_of_numbers_is_an_error(text, options, message):
+    with pytest.raises(DataError) as error:
+        read(io.BytesIO(text.encode()), **options)
+    assert str(error.value) == f"<file>:{message}; --as states takes every distinct value as a state"
 
 
 def test_kinds():
     assert got("1\n2\n1\n", kind="states") == ["1", "2", "1"]
     assert got('"1"\n"2"\n') == ["1", "2"]
-    with pytest.raises(OptionError, match="numbers are not supported yet"):
-        got("a\n", kind="numbers")
+    assert read(io.BytesIO(b""), kind="numbers").values.tolist() == []
     with pytest.raises(OptionError, match="no kind 'x'; the kinds are states, numbers, bytes"):
         got("a\n", kind="x")
 
@@ -284,8 +337,11 @@ def test_an_alphabet_goes_on():
     assert first.alphabet.labels == ["a", "b", "c"]
     assert got("1\n2\n", alphabet=first.alphabet) == ["1", "2"]
     assert read(io.BytesIO(b"ab"), alphabet=Alphabet.for_bytes()).codes.tolist() == [97, 98]
-    with pytest.raises(OptionError, match="the alphabet is one of states, so the log cannot be read as bytes"):
-        got("a\n", kind="bytes", alphabet=first.alphabet)
+    for kind in ("bytes", "numbers"):
+        with pytest.raises(OptionError, match=f"the alphabet is one of states, so the log cannot be read as {kind}"):
+            got("a\n", kind=kind, alphabet=first.alphabet)
+    first = read(io.BytesIO(b"1\n2\n"))
+    assert read(io.BytesIO(b"3\n"), kind=first.kind, alphabet=first.alphabet).values.tolist() == [3]
 
 
 def test_the_labels_of_bytes():

@@ -22,14 +22,66 @@ def test_the_characters_of_a_text_are_states():
     assert Series.of("abca").codes.tolist() == [0, 1, 2, 0]
 
 
-def test_numbers_need_a_kind():
-    for values in ([1, 2], [1.5, None], np.arange(3), (value for value in [1])):
-        with pytest.raises(OptionError, match="values: numbers are not supported yet; --as states"):
-            Series.of(values)
-    with pytest.raises(OptionError, match="numbers are not supported yet"):
-        Series.of(["a"], kind="numbers")
+@pytest.mark.parametrize(
+    ("values", "numbers"),
+    [
+        ([1, 2], [1, 2]),
+        ([1.5, None, float("nan"), "NA"], [1.5, None, None, None]),
+        ([1.5, None, 2], [1.5, None, 2]),
+        ((value for value in [1]), [1]),
+        (range(3), [0, 1, 2]),
+        (np.arange(3), [0, 1, 2]),
+        (np.array([0.1, np.nan]), [0.1, None]),
+        (np.array([0.1, np.nan, 3e38, 16.7], np.float32), [0.1, None, 3e38, 16.7]),
+        (np.array([200, 1], np.uint8), [200, 1]),
+        (np.array([1, None, 2.5], object), [1, None, 2.5]),
+        ([np.float32(0.5), np.int16(3)], [0.5, 3]),
+        ([1e300, -1e-300, 10**300, 12.658579999999999], [1e300, -1e-300, 1e300, 12.658579999999999]),
+    ],
+)
+def test_numbers(values, numbers):
+    series = Series.of(values)
+    assert (series.kind, series.format, len(series.alphabet), series.notes) == ("numbers", "values", 0, [])
+    assert (series.values.dtype, series.codes.dtype) == (np.float64, np.int32)
+    assert [None if np.isnan(value) else value for value in series.values] == numbers
+    assert series.codes.tolist() == [MISSING if number is None else 0 for number in numbers]
+
+
+def test_numbers_are_a_copy():
+    values = np.array([1.0, 2.0])
+    series = Series.of(values)
+    values[0] = 7
+    assert series.values.tolist() == [1, 2]
+
+
+def test_infinite_numbers_are_missing():
+    for values in ([1, float("inf"), -float("inf")], [1, 10**400, -(10**400)], np.array([1, np.inf, -np.inf])):
+        series = Series.of(values)
+        assert series.codes.tolist() == [0, MISSING, MISSING]
+        assert series.notes == ["numbers that are not finite, taken as missing: 2"]
+
+
+def test_what_kind_values_are():
+    assert Series.of(np.zeros(0)).kind == "numbers"
+    assert Series.of([], kind="numbers").values.tolist() == []
+    assert Series.of([float("nan")]).kind == "numbers"
+    for values in ([], [None], ["1", "2"], [1, "a"], [True, 2], [True, False], np.array([True]), "12"):
+        assert Series.of(values).kind == "states"
+    assert Series.of(["1", " 2.5 ", None], kind="numbers").values[:2].tolist() == [1, 2.5]
     assert Series.of([1, 1.0, True, "1"], kind="states").alphabet.labels == ["1", "1.0", "true"]
     assert Series.of(np.array([7, 3, 7]), kind="states").alphabet.labels == ["7", "3"]
+
+
+def test_values_that_are_no_number():
+    advice = 'kind="states" takes every value as one'
+    with pytest.raises(DataError, match=f"values: row 1: not a number: 'a\\\\x1b'; {advice}"):
+        Series.of([1, "a\x1b"], kind="numbers")
+    with pytest.raises(DataError, match="values: row 4096: not a number: 'true'"):
+        Series.of([*range(CHUNK), True])
+    with pytest.raises(DataError, match="values: a value that cannot be taken: complex is neither text"):
+        Series.of([1j])
+    with pytest.raises(DataError, match="values: an array of 2 dimensions, where rows have one"):
+        Series.of(np.zeros((2, 2)))
 
 
 def test_bytes():
@@ -43,9 +95,9 @@ def test_bytes():
 
 
 def test_values_that_are_no_state():
-    with pytest.raises(DataError, match="x: a value that is no state: tuple is neither text"):
+    with pytest.raises(DataError, match="x: a value that cannot be taken: tuple is neither text"):
         Series.of([(1, 2)], name="x")
-    with pytest.raises(DataError, match="a value that is no state"):
+    with pytest.raises(DataError, match="a value that cannot be taken"):
         Series.of([["a"]])
     with pytest.raises(OptionError, match="no kind 'x'"):
         Series.of(["a"], kind="x")
@@ -108,6 +160,25 @@ def test_a_slice_is_a_log_of_its_own():
     assert [len(rows) for rows in series.chunks()] == [len(rows) for rows in series.chunks()] == [CHUNK] * 3
 
 
+def test_a_slice_of_numbers():
+    values = np.where(np.arange(2 * CHUNK) % 5 == 0, np.nan, np.arange(2 * CHUNK))
+    series = Series.of(values, times=np.arange(2 * CHUNK) * 1_000_000)
+    part = series.slice(5, CHUNK + 7)
+    assert (part.kind, part.first, len(part)) == ("numbers", 5, CHUNK + 2)
+    np.testing.assert_array_equal(part.values, values[5 : CHUNK + 7])
+    assert part.codes.tolist() == [MISSING if row % 5 == 0 else 0 for row in range(5, CHUNK + 7)]
+    first, second = part.chunks()
+    assert (len(first), second.first, len(second.times)) == (CHUNK, 5 + CHUNK, 2)
+    np.testing.assert_array_equal(second.values, values[CHUNK + 5 : CHUNK + 7])
+
+
+def test_gaps_of_numbers_are_filled():
+    series = Series.of(np.arange(12.0), times=[*range(0, 110, 10), 130])
+    assert (series.cadence, series.gaps, series.filled) == (10, 1, 2)
+    np.testing.assert_array_equal(series.values, [*range(11), np.nan, np.nan, 11])
+    assert series.codes.tolist() == [0] * 11 + [MISSING] * 2 + [0]
+
+
 def test_rows_can_be_sliced():
     rows = Rows(np.arange(10, dtype=np.int32), np.arange(10) * 10, first=100)
     part = rows[3:7]
@@ -118,6 +189,9 @@ def test_rows_can_be_sliced():
         [30, 40, 50, 60],
     )
     assert rows[-2:].first == 108
+    assert (part.values, part.cells) == (None, None)
+    rows = Rows(np.zeros(10, np.int32), None, 0, np.arange(10.0), np.ones(10))
+    assert (rows[3:5].values.tolist(), rows[3:5].cells.tolist()) == ([3, 4], [1, 1])
     with pytest.raises(ValueError, match="no step"):
         rows[::2]
 

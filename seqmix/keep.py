@@ -6,7 +6,7 @@ process can carry.
 
 from __future__ import annotations
 
-from typing import Any, ClassVar
+from typing import Any
 
 import numpy as np
 
@@ -14,7 +14,7 @@ import numpy as np
 class Kept:
     """A part with state: `kept` names its arrays and scalars, `parts` what it is made of."""
 
-    kept: ClassVar[tuple[str, ...]] = ()
+    kept: tuple[str, ...] = ()
 
     def parts(self) -> dict[str, Kept]:
         return {}

@@ -1,0 +1,154 @@
+"""The mixture over a log of numbers: the same weights, laws of numbers, and the grid that makes them masses."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from seqmix.keep import Kept
+from seqmix.mixture.mixture import Mixture
+from seqmix.mixture.weights import RATES
+from seqmix.models import registry
+from seqmix.models.laws import NumberLaw
+from seqmix.models.numbers import FIRST, Context, NumbersModel
+from seqmix.models.protocol import Ask, Floats, leading, split
+from seqmix.series.grid import Grid
+from seqmix.series.rows import Rows
+
+TINY = 1e-300
+"""Numbers nearer to 0 count as 0: there floats lose their digits."""
+
+HUGE = 1e140
+"""Numbers beyond are not shown to the models."""
+
+LIGHT = 1e-4
+"""Weight of the lightest parts that laws of steps ahead leave out."""
+
+PATHS = 500
+"""Most continuations a model looks at for the laws of steps ahead, where it has no closed form."""
+
+
+class NumberMixture(Mixture):
+    """A weighted Bayesian mixture of models over one log of numbers.
+
+    models: objects, names of the library, or None for all that fit; context: what is known of the log
+    beforehand; resolution: of its grid, None to find it; rates: as for `Mixture`.
+    The cell of a row, and the loss of what a finer value tells of the grid, are the same for every model.
+    """
+
+    def __init__(
+        self,
+        models: Sequence[Any] | None = None,
+        *,
+        context: Context | None = None,
+        resolution: float | None = None,
+        rates: Sequence[float] = RATES,
+    ) -> None:
+        self.context = context or Context()
+        self.grid = Grid(resolution)
+        self.factor = 0.0  # what the models see is the log times this; 0: not chosen yet
+        self.latest: Rows | None = None  # the rows absorbed last, with their cells
+        self.latest_events = 0.0  # and the bits that they told of the grid
+        super().__init__(models, kind="numbers", timed=self.context.timed, rates=rates)
+
+    def _make(self, kind: str, timed: bool, names: list[str] | None) -> list[NumbersModel]:  # type: ignore[override]
+        return registry.make_numbers(self.context, names)
+
+    kept = (*Mixture.kept, "factor")
+
+    def parts(self) -> dict[str, Kept]:
+        return super().parts() | {"grid": self.grid}
+
+    def absorb(self, rows: Rows | npt.ArrayLike, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        """Predict and learn rows (Rows with values, or values (n,), NaN = missing): loss of each in bits, (n,).
+
+        frozen: the weights stand still; levels, slopes and coefficients go on following the rows.
+        """
+        if not isinstance(rows, Rows):
+            rows = Rows.of(np.array(rows, dtype=np.float64), None, self.rows)
+        assert ask is None and rows.values is not None, "laws of numbers are asked for with predict"
+        values = self.grid.snap(np.where(np.abs(rows.values) < TINY, 0.0, rows.values))
+        widths, events = self.grid.cells(values)
+        # what a double can hardly square is kept from the models, and charged by the law that knows nothing
+        self._choose_unit(values)
+        with np.errstate(over="ignore", under="ignore"):
+            huge = np.abs(values * self.factor) > HUGE
+            shown = np.where(huge, np.nan, values * self.factor)
+            cells = np.clip(widths * self.factor, 1e-290, HUGE)
+        self.latest = Rows(rows.codes, rows.times, rows.first, shown, cells)
+        self.latest_events = float(events.sum())
+        bits = super().absorb(self.latest, None, frozen)
+        alone = np.isnan(bits) & (rows.codes >= 0)  # nobody was awake
+        for t in np.flatnonzero(huge | alone).tolist():
+            unaided = FIRST.bits(float(rows.values[t]), float(widths[t])) - (0.0 if np.isnan(bits[t]) else bits[t])
+            bits[t] = FIRST.bits(float(rows.values[t]), float(widths[t]))
+            self.bits += unaided
+            self.model_bits += unaided
+        self.bits += self.latest_events
+        self.model_bits += self.latest_events
+        return bits + events
+
+    def _choose_unit(self, values: Floats) -> None:
+        """Numbers of a size far from 1 go to the models times a power of two, fixed by the first that is not 0."""
+        if self.factor == 0.0:
+            sized = values[(values != 0) & ~np.isnan(values)]
+            if len(sized):
+                power = int(np.clip(-np.frexp(sized[0])[1], -1000, 1000))
+                self.factor = 2.0**power if abs(power) > 100 else 1.0
+
+    def _back(self, law: NumberLaw) -> NumberLaw:
+        """A law of the models, in the unit of the log."""
+        return law if self.factor in (0.0, 1.0) else law.times(1.0 / self.factor)
+
+    def _admit(self, codes: npt.NDArray[np.int32]) -> None:
+        """Numbers need no alphabet."""
+
+    def predict(self, time: int | None = None) -> NumberLaw:  # type: ignore[override]
+        """Law of the next row, at `time` (microseconds) where the log has times."""
+        return self._back(self._mixed([model.predict(time) for model in self.models]))  # type: ignore[misc]
+
+    def _mixed(self, laws: Sequence[NumberLaw | None]) -> NumberLaw:
+        if all(law is None for law in laws):
+            return FIRST
+        weights = self.weights.of(np.array([law is not None for law in laws]))
+        awake = [(weight, law) for weight, law in zip(weights, laws, strict=True) if law is not None]
+        return NumberLaw.combine([weight for weight, _ in awake], [law for _, law in awake])
+
+    def walk(  # type: ignore[override]
+        self, steps: int, times: Sequence[int | None] | None = None, paths: int = PATHS
+    ) -> list[NumberLaw]:
+        """Law of each of the next steps: each model's own, weighed by how likely it is in force there."""
+        weights = self.weights.ahead(steps)
+        laws: list[tuple[int, list[NumberLaw]]] = []
+        for i, _ in leading(weights.max(axis=0)):
+            ahead = self.models[i].walk(steps, paths, times)
+            if ahead is not None:
+                laws.append((i, ahead))  # type: ignore[arg-type]
+        if not laws:
+            return [FIRST] * steps
+        out = []
+        for step in range(steps):
+            heavy = np.array([weights[step, i] for i, _ in laws])
+            law = NumberLaw.combine(heavy / heavy.sum(), [ahead[step] for _, ahead in laws], LIGHT)
+            out.append(self._back(law))
+        return out
+
+    def sample(  # type: ignore[override]
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Floats:
+        """Joint continuations, (paths, steps), in random order."""
+        awake = np.array([model.predict(None if times is None else times[0]) is not None for model in self.models])
+        if not awake.any():
+            return np.stack([FIRST.draw(rng, paths) for _ in range(steps)], axis=1)
+        shares = split(self.weights.of(awake), paths, rng)
+        drawn = [
+            model.sample(steps, int(share), rng, times)
+            for model, share in zip(self.models, shares, strict=True)
+            if share
+        ]
+        with np.errstate(over="ignore"):
+            paths_drawn = np.concatenate(drawn) / (self.factor or 1.0)
+        return rng.permutation(np.clip(paths_drawn, -1e308, 1e308))

@@ -1,0 +1,62 @@
+"""A broad law for whatever the sharp laws of other models leave over."""
+
+from __future__ import annotations
+
+from math import isnan, nan
+
+import numpy as np
+
+from seqmix.keep import Kept
+from seqmix.kernels import numbers as kernel
+from seqmix.kernels import view
+from seqmix.models.laws import FIRST, Floats, NumberLaw, log_peak
+
+_SHAPE = 2.0  # degrees of freedom: heavy tails, but a mean
+_RECENT = 256  # steps that the scale is taken from
+
+
+class Broad(Kept):
+    """A law for whatever the sharp laws leave over: Student's t of 2 degrees of freedom around the last value.
+
+    Its scale is the median of the last 256 steps that were not 0, taken anew whenever `refit` is called.
+    """
+
+    kept = ("last", "scale", "steps")
+
+    def __init__(self) -> None:
+        self.last = nan
+        self.scale = float(FIRST.scales[0])
+        self.steps: Floats = np.zeros(0)
+
+    def law(self) -> NumberLaw:
+        return FIRST if isnan(self.last) else NumberLaw.of(self.last, self.scale, _SHAPE)
+
+    def absorb(self, values: Floats, widths: Floats) -> Floats:
+        """Bits of the cell of each row under the law before it, (n,); of no meaning where a value is missing."""
+        there = np.flatnonzero(~np.isnan(values))
+        if not len(there):
+            return np.zeros(len(values))
+        first = float(values[there[0]])
+        began = isnan(self.last)
+        if began:
+            self.last = float(FIRST.centres[0])
+            self.scale = 0.1 * abs(first) or float(FIRST.scales[0])
+        held = np.concatenate([[self.last], values[there]])  # what the last value may be
+        count = np.cumsum(~np.isnan(values)) - ~np.isnan(values)
+        scales = np.where(began & (count == 0), FIRST.scales[0], self.scale)
+        bits = np.zeros(len(values))
+        middle = np.where(np.isnan(values), 0.0, values)
+        shapes = np.where(began & (count == 0), FIRST.shapes[0], _SHAPE)
+        kernel.masses(
+            view(shapes), view(np.where(shapes == _SHAPE, log_peak(_SHAPE), log_peak(1.0))),
+            view(middle), view(np.ascontiguousarray(widths)), view(held[count]), view(scales), view(bits),
+        )  # fmt: skip
+        with np.errstate(over="ignore"):
+            steps = np.abs(np.diff(held[1:] if began else held))
+        self.steps = np.concatenate([self.steps, steps[(steps > 0) & np.isfinite(steps)]])[-_RECENT:]
+        self.last = float(held[-1])
+        return bits
+
+    def refit(self) -> None:
+        if len(self.steps):
+            self.scale = float(np.median(self.steps))

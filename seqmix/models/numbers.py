@@ -1,0 +1,271 @@
+"""What the models of numbers share: the context of a log, cells on two scales, and banks of settings."""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+import numpy.typing as npt
+
+from seqmix.keep import Kept
+from seqmix.mixture.weights import Weights
+from seqmix.models.broad import Broad
+from seqmix.models.laws import FIRST, Floats, NumberLaw
+from seqmix.models.protocol import Ask, leading, split
+from seqmix.series.rows import Rows
+
+LOOKS = tuple(1 << k for k in range(4, 40))
+"""Rows after which banks drop what is far behind: 16, 32, 64, 128, ..."""
+
+STRAY = 2.0**-12
+"""Mass that a bank of sharp laws leaves to a broad one, so that no value can ruin it."""
+
+
+def with_stray(bits: Floats, broad: Floats) -> Floats:
+    """Losses (n,) of a law with a broad one mixed in."""
+    return -np.logaddexp2(np.log2(1.0 - STRAY) - bits, np.log2(STRAY) - broad)
+
+
+@dataclass(frozen=True)
+class Context:
+    """What models of numbers may know of a log beforehand.
+
+    periods: rows per repeat, from the clock or the user. cadence: microseconds a row. timed: rows have times.
+    """
+
+    periods: tuple[int, ...] = ()
+    cadence: int | None = None
+    timed: bool = False
+
+
+class Cells:
+    """The cells of n rows on the plain (0) and the log (1) scale."""
+
+    def __init__(self, values: Floats, widths: Floats) -> None:
+        self.values = values
+        self.widths = widths
+
+    @classmethod
+    def of(cls, rows: Rows) -> Cells:
+        assert rows.values is not None and rows.cells is not None
+        return cls(rows.values, rows.cells)
+
+    def __len__(self) -> int:
+        return len(self.values)
+
+    def __getitem__(self, part: slice) -> Cells:
+        return Cells(self.values[part], self.widths[part])
+
+    @cached_property
+    def usable(self) -> npt.NDArray[np.uint8]:
+        """(2, n): 0 where there is no value, 1 where the scale knows it, 2 where it knows a part of its cell only
+        (nothing is learned from that), 3 where it holds it impossible."""
+        there = ~np.isnan(self.values)
+        with np.errstate(invalid="ignore"):
+            logs = np.where(self.values > 0, 1, np.where(self.values + 0.5 * self.widths > 0, 2, 3))
+        return np.stack([there, np.where(there, logs, 0)]).astype(np.uint8)
+
+    @cached_property
+    def seen(self) -> Floats:
+        """(2, n): the values on both scales, 0 where there is none."""
+        plain = np.where(self.usable[0], self.values, 0.0)
+        return np.stack([plain, np.log(np.where(self.usable[1] == 1, self.values, 1.0))])
+
+    @cached_property
+    def spans(self) -> Floats:
+        """(2, n, 2): middle and width, as `laws.span` has them."""
+        values, half = self.seen[0], 0.5 * self.widths
+        inside = values > half
+        share = np.where(inside, half / np.where(inside, values, 1.0), 0.0)
+        upper = np.where((self.usable[1] % 3 > 0) & ~inside, values + half, 1.0)
+        middle = np.where(inside, np.log(np.where(inside, values, 1.0)) + 0.5 * np.log1p(-share * share), np.log(upper))
+        width = np.where(inside, np.log1p(share) - np.log1p(-share), np.inf)
+        return np.ascontiguousarray(
+            np.stack([np.stack([values, self.widths], axis=1), np.stack([middle, width], axis=1)])
+        )
+
+
+class NumbersModel(Kept, ABC):
+    """One explanation of a log of numbers. Shapes: n rows; centres and scales in the log's own unit.
+
+    Any chunking of the rows gives the same losses to the last bit. The loss of a row is minus log2 of the mass of its
+    cell, rows.cells[t] wide, under the law that `predict` gave before it.
+    """
+
+    name: str
+    kinds: tuple[str, ...] = ("numbers",)
+    prior_cost: float  # bits
+    summary: str  # one line
+    source: str  # the paper
+
+    def __init__(self, context: Context) -> None:
+        self.context = context
+
+    @classmethod
+    def fits(cls, context: Context) -> bool:
+        """Whether the model has anything to say about such a log."""
+        return True
+
+    @abstractmethod
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        """Loss of each row in bits, (n,), predicted before it is learned; 0 where missing, NaN while asleep.
+
+        frozen: weights stand still; what follows the rows (levels, slopes, coefficients) goes on doing so.
+        """
+
+    @abstractmethod
+    def predict(self, time: int | None = None) -> NumberLaw | None:
+        """Law of the next row, at `time` (microseconds) where the log has times; None while asleep."""
+
+    @abstractmethod
+    def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
+        """Law of each of the next steps; None while asleep. `paths`: most continuations to look at, if it must."""
+
+    @abstractmethod
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Floats:
+        """Joint continuations, (paths, steps)."""
+
+    def setting(self) -> str:
+        """The leading setting, in a few words; empty where there is one only."""
+        return ""
+
+
+class NumberBank(NumbersModel):
+    """A bank of settings, each with a standard law of the next row, mixed inside by Bayes.
+
+    At rows 16, 32, 64, ... settings more than `_FAR` bits behind the leading one are dropped, and all but
+    the `_CROWD[0]`, then `_CROWD[1]`, ... heaviest.
+    """
+
+    _FAR = 30.0
+    _CROWD = (400, 256, 160, 96, 48, 32)
+
+    kept: tuple[str, ...] = ("rows", "observed", "alive", "_first")
+
+    def __init__(self, context: Context, costs: Floats) -> None:
+        super().__init__(context)
+        self.rows = 0
+        self.observed = 0  # rows with a value
+        self.alive = np.arange(len(costs))  # settings not dropped
+        self._first = 0.0  # the first value
+        self._weights = Weights(costs, rates=(0.002,))
+        self._broad = Broad()
+
+    def parts(self) -> dict[str, Kept]:
+        return {"weights": self._weights, "broad": self._broad}
+
+    @abstractmethod
+    def _begin(self, value: float) -> None:
+        """Take up the first value of the log; the scale of errors is not known yet."""
+
+    @abstractmethod
+    def _size_up(self, least: Floats) -> None:
+        """The second value was learned: its error is all that is known of the scale, if at least `least` (2,)."""
+
+    @abstractmethod
+    def _learn(self, cells: Cells, rows: Rows) -> Floats:
+        """Loss of each row under each living setting, (n, settings), predicted before it is learned."""
+
+    @abstractmethod
+    def _keep(self, which: npt.NDArray[np.intp]) -> None:
+        """Drop all living settings but these, positions among the living."""
+
+    @abstractmethod
+    def _ahead(self, which: npt.NDArray[np.intp], weights: Floats, steps: int) -> list[NumberLaw]:
+        """Laws of the next steps under some living settings, mixed by `weights`."""
+
+    @abstractmethod
+    def _paths(self, at: int, steps: int, paths: int, rng: np.random.Generator) -> Floats:
+        """Joint continuations under one living setting, (paths, steps)."""
+
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        bits = np.zeros(len(rows))
+        cells = Cells.of(rows)
+        done = 0
+        while self.observed < 2 and done < len(rows):
+            done += self._early(cells[done:], rows[done:], bits[done:])
+        while done < len(rows):
+            look = next(look for look in LOOKS if look > self.rows)
+            stop = min(len(rows), done + look - self.rows)
+            part = cells[done:stop]
+            losses = self._learn(part, rows[done:stop])
+            mixed, _ = self._weights.mix(losses, np.full(stop - done, -1, dtype=np.int32), frozen)
+            mixed = with_stray(mixed, self._broad.absorb(part.values, part.widths))
+            bits[done:stop] = np.where(part.usable[0], mixed, 0.0)
+            self.observed += int(part.usable[0].sum())
+            self.rows += stop - done
+            done = stop
+            if self.rows == look and not frozen:
+                self._broad.refit()
+                self._drop(self._CROWD[min(LOOKS.index(look), len(self._CROWD) - 1)])
+        return bits
+
+    def _early(self, cells: Cells, rows: Rows, bits: Floats) -> int:
+        """Learn up to and with the first or the second value, by laws that all settings share; rows done."""
+        there = np.flatnonzero(cells.usable[0])
+        stop = int(there[0]) + 1 if len(there) else len(rows)
+        if self.observed:
+            self._learn(cells[:stop], rows[:stop])
+        self.rows += stop
+        if len(there):
+            value, width = float(cells.values[stop - 1]), float(cells.widths[stop - 1])
+            self._broad.absorb(cells.values[:stop], cells.widths[:stop])
+            bits[stop - 1] = self._early_law().bits(value, width)
+            if self.observed:
+                self._size_up(np.array([width, width / max(abs(value), width)]) / 4)
+            else:
+                self._begin(value)
+                self._first = value
+            self.observed += 1
+        return stop
+
+    def _early_law(self) -> NumberLaw:
+        """Cauchy around nothing for the first value, around the first for the second."""
+        if not self.observed:
+            return FIRST
+        return NumberLaw.of(self._first, 0.1 * abs(self._first) or FIRST.scales[0], 1.0)
+
+    def _drop(self, most: int) -> None:
+        weights = self._weights.now()
+        order = np.argsort(-weights, kind="stable")[:most]
+        which = np.sort(order[weights[order] >= weights.max() * 2.0**-self._FAR])
+        if len(which) < len(weights):
+            self._keep(which)
+            self._weights.keep(which)
+            self.alive = self.alive[which]
+
+    def predict(self, time: int | None = None) -> NumberLaw | None:
+        laws = self.walk(1, 0, None if time is None else [time])
+        return laws[0] if laws else None
+
+    def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
+        if self.observed < 2:
+            return [self._early_law()] * steps
+        weights = self._weights.now()
+        if steps == 1:
+            laws = self._ahead(np.arange(len(weights)), weights, 1)
+        else:
+            some = leading(weights)
+            laws = self._ahead(np.array([i for i, _ in some]), np.array([weight for _, weight in some]), steps)
+        return [NumberLaw.combine([1.0 - STRAY, STRAY], [law, self._broad.law()]) for law in laws]
+
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Floats:
+        if self.observed < 2:
+            return np.stack([self._early_law().draw(rng, paths) for _ in range(steps)], axis=1)
+        shares = split(self._weights.now(), paths, rng)
+        drawn = [self._paths(i, steps, int(share), rng) for i, share in enumerate(shares) if share]
+        return np.concatenate(drawn)
+
+    def setting(self) -> str:
+        return self._label(int(self.alive[int(np.argmax(self._weights.now()))]))
+
+    @abstractmethod
+    def _label(self, setting: int) -> str:
+        """What the setting with this number (before any was dropped) is, in a few words."""
