@@ -141,7 +141,9 @@ class NumberForecast:
 def on_grid(values: Floats, resolution: float) -> Floats:
     """Values moved to the nearest points of a grid, with its decimals."""
     decimals = int(np.clip(np.ceil(-np.log10(resolution)) + 3, 0, 300))
-    return np.round(np.round(values / resolution) * resolution, decimals)
+    with np.errstate(over="ignore"):
+        moved = np.round(np.round(values / resolution) * resolution, decimals)
+    return np.where(np.isfinite(moved), moved, values)
 
 
 def _name(number: float) -> str:

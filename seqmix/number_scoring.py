@@ -71,6 +71,10 @@ class _Measures:
         self.pit = np.zeros(10)
 
     def learn(self, law: NumberLaw, value: float, width: float, weight: float) -> None:
+        with np.errstate(over="ignore"):  # a measure too large for a float is infinite
+            self._learn(law, value, width, weight)
+
+    def _learn(self, law: NumberLaw, value: float, width: float, weight: float) -> None:
         sides = [(1 - share) / 2 for share in CENTRAL] + [(1 + share) / 2 for share in CENTRAL]
         quantiles = law.quantile([*PINBALL, *sides])
         spots, low, high = np.split(quantiles, [len(PINBALL), len(PINBALL) + len(CENTRAL)])

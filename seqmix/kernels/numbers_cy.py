@@ -140,6 +140,8 @@ def _log_density(shape: cython.double, z: cython.double, norm: cython.double) ->
     """Log density of a standard law at z; norm: its log density at 0."""
     if shape == 0.0:
         return norm - 0.5 * z * z
+    if shape == UNIFORM:
+        return norm if fabs(z) <= 1.0 else -1e300
     if shape < 0.0:
         return norm - fabs(z)
     if z > 1e140:  # its square is no float
@@ -322,11 +324,27 @@ def _density(
     return total
 
 
+@cython.cfunc
+@cython.nogil
+@cython.inline
+@cython.exceptval(check=False)
+def _between(a: cython.double, b: cython.double) -> cython.double:
+    """A number between two others that halves either their distance or the ratio of their sizes."""
+    if a < 0.0 < b:
+        return 0.0
+    if b <= 0.0:
+        return -_between(-b, -a)
+    if b > 4.0 * a:
+        return sqrt(max(a, 5e-324)) * sqrt(b)
+    return a + 0.5 * (b - a)
+
+
 def quantiles(
     levels: cython.double[::1],
     low: cython.double,
     high: cython.double,
-    fine: cython.double,
+    plain: cython.double,
+    log_scale: cython.double,
     weights: cython.double[::1],
     centres: cython.double[::1],
     scales: cython.double[::1],
@@ -335,9 +353,10 @@ def quantiles(
     logs: cython.uchar[::1],
     out: cython.double[::1],
 ) -> None:
-    """out[i] = the least x with P(X <= x) >= levels[i], to 1e-12 of `fine`; out comes in as first guesses.
+    """out[i] = the least x between low and high with P(X <= x) >= levels[i]; out comes in as first guesses.
 
-    Newton's method, kept between two ends that close in, by halving where it would leave them.
+    Newton's method, kept between two ends that close in, by halving where it would leave them; until a step is
+    under 1e-12 of `plain`, the least scale, and of x times `log_scale`, the least on the log scale.
     """
     i: cython.Py_ssize_t
     turn: cython.int
@@ -353,7 +372,7 @@ def quantiles(
             x = out[i]
             for turn in range(400):
                 if not a < x < b:
-                    x = 0.5 * a + 0.5 * b
+                    x = _between(a, b)
                     if not a < x < b:
                         break
                 p = _below(x, weights, centres, scales, shapes, norms, logs)
@@ -361,18 +380,18 @@ def quantiles(
                     b = x
                 else:
                     a = x
-                if b - a <= max(1e-13 * fine, 2.3e-16 * (fabs(a) + fabs(b))):
-                    break
                 step = _density(x, weights, centres, scales, shapes, norms, logs)
                 if step <= 0.0 or turn % 8 == 7:
-                    x = 0.5 * a + 0.5 * b
+                    x = _between(a, b)
                     continue
                 step = (levels[i] - p) / step
                 if not a < x + step < b:
-                    x = 0.5 * a + 0.5 * b
+                    if fabs(step) <= 1e-15 * fabs(x) and p >= levels[i]:
+                        break
+                    x = _between(a, b)
                     continue
                 x = x + step
-                if fabs(step) <= max(1e-12 * fine, 2.3e-16 * fabs(x)):
+                if fabs(step) <= 1e-12 * min(plain, fabs(x) * log_scale):
                     b = x
                     break
             out[i] = b
@@ -603,7 +622,17 @@ def regress(
                         c += covs[i, j, k] * x[k]
                     gain[j] = c
                     v += c * x[j]
-                v = max(v, 1.0)  # rounding must not make it less
+                if not 1.0 - 1e-6 < v < 1e300:  # rounding got the better of the covariance: its diagonal is kept
+                    v = 1.0
+                    for j in range(size):
+                        c = covs[i, j, j]
+                        for k in range(size):
+                            covs[i, j, k] = 0.0
+                            covs[i, k, j] = 0.0
+                        covs[i, j, j] = (c if c < 1.0 else 1.0) if c > 1e-12 else 1e-12
+                        gain[j] = covs[i, j, j] * x[j]
+                        v += gain[j] * x[j]
+                v = max(v, 1.0)
                 forecasts[t, i] = f
                 scales[t, i] = sqrt(v * squares[i] / df[rate[i], t])
                 bits[t, i] = 0.0

@@ -142,13 +142,18 @@ class NumberLaw:
         low, high = self._bracket(float(flat.min()), float(flat.max()))
         # a first guess: the normal law of the same middle and spread
         out = self._middle + self._spread * np.array([_normal_quantile(level) for level in flat.tolist()])
-        fine = self._spread or high - low
-        kernel.quantiles(view(flat), low, high, fine, *self._parts, view(out))
-        atoms = self.centres[(self.scales == 0) & ~self.logs]
+        wide = self.scales > 0
+        plain, log_scale = (
+            float(self.scales.min(initial=1e300, where=wide & side)) for side in (~self.logs, self.logs)
+        )
+        kernel.quantiles(view(flat), low, high, plain, log_scale, *self._parts, view(out))
+        atoms = self.centres[~wide & ~self.logs]
         if len(atoms):  # halving stops just above an atom that it means
             nearest = atoms[np.abs(out[:, None] - atoms).argmin(axis=1)]
-            meant = (np.abs(out - nearest) <= 1e-12 * fine) & (self.cdf(nearest) >= flat)
+            meant = (np.abs(out - nearest) <= 1e-15 * np.abs(nearest)) & (self.cdf(nearest) >= flat)
             out = np.where(meant, nearest, out)
+        order = np.argsort(flat, kind="stable")
+        out[order] = np.maximum.accumulate(out[order])
         return out.reshape(levels.shape)
 
     @cached_property
@@ -201,9 +206,11 @@ class NumberLaw:
         return mean if np.isfinite(mean) else nan
 
     def times(self, factor: float) -> NumberLaw:
-        """The law of the number times `factor` > 0."""
-        centres = np.where(self.logs, self.centres + log(factor), self.centres * factor)
-        return NumberLaw(self.weights, centres, np.where(self.logs, 1.0, factor) * self.scales, self.shapes, self.logs)
+        """The law of the number times `factor` > 0; never over 1e307."""
+        with np.errstate(over="ignore"):
+            centres = np.where(self.logs, self.centres + log(factor), np.clip(self.centres * factor, -1e307, 1e307))
+            scales = np.where(self.logs, self.scales, np.minimum(self.scales * factor, 1e307))
+        return NumberLaw(self.weights, centres, scales, self.shapes, self.logs)
 
     def lighter(self, light: float) -> NumberLaw:
         """The law without its lightest parts, of weight `light` in all."""

@@ -27,14 +27,15 @@ _RECURRENCE, _REPEAT = 4, 5
 _REMEMBERED = 32  # values
 _USED = 24  # of them, for a recurrence
 _SHORT = 12  # up to so many values, a recurrence is sought at every row
-_PRIOR = 1 / 80  # of a hit, and of a miss
+_FRESH = (1 / 3, 1 / 3, 1 / 2, 1 / 2, 2 / 3, 2 / 3)  # chance that a rule holds once more, before any row
+_STUBBORN = 1 / 40  # rows that this counts for
 
 
 class Rules(NumbersModel):
     """What the last values obeyed exactly is taken to go on; asleep while they obeyed no rule.
 
-    A rule that h rows bore out and m did not gives the value it foretells the mass p = (h + c) / (h + m + 2c),
-    c = 1/80: 1/2 when fresh, 0.994 after two hits. The rest, 1 - p, goes to a broad law. A rule foretells something
+    A rule that h rows bore out and m did not gives the value it foretells the mass p = (h + f/40) / (h + m + 1/40),
+    f from 1/3 to 2/3 the more values it took to find it; p is 0.99 after two hits. The rest, 1 - p, goes to a broad law. A rule foretells something
     when it holds for the last value too: a difference of order k was the same twice; a recurrence of order r <= 4,
     shortest by the algorithm of Berlekamp and Massey over the rationals (Massey 1969), fits more than 2 r values;
     a block of 2 to 12 values came twice. Where several foretell the same value, the simplest speaks for them; those
@@ -119,8 +120,8 @@ class Rules(NumbersModel):
 
     def _sure(self, rule: int, ahead: int = 0) -> float:
         """Chance that a rule holds once more, after `ahead` more hits."""
-        hits = int(self.hits[rule]) + ahead + _PRIOR
-        return hits / (hits + int(self.misses[rule]) + _PRIOR)
+        hits = int(self.hits[rule]) + ahead
+        return (hits + _STUBBORN * _FRESH[rule]) / (hits + int(self.misses[rule]) + _STUBBORN)
 
     def _wait(self, hit: bool) -> None:
         """How long to wait before the next search, after a hit or a miss (or a search in vain)."""
