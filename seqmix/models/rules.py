@@ -35,11 +35,11 @@ class Rules(NumbersModel):
     """What the last values obeyed exactly is taken to go on; asleep while they obeyed no rule.
 
     A rule that h rows bore out and m did not gives the value it foretells the mass p = (h + f/40) / (h + m + 1/40),
-    f from 1/3 to 2/3 the more values it took to find it; p is 0.99 after two hits. The rest, 1 - p, goes to a broad law. A rule foretells something
-    when it holds for the last value too: a difference of order k was the same twice; a recurrence of order r <= 4,
-    shortest by the algorithm of Berlekamp and Massey over the rationals (Massey 1969), fits more than 2 r values;
-    a block of 2 to 12 values came twice. Where several foretell the same value, the simplest speaks for them; those
-    that speak are mixed by Bayes, the others sleep.
+    f from 1/3 to 2/3 the more values it took to find it; p is 0.99 after two hits. The rest, 1 - p, goes to a broad
+    law. A rule foretells something when it holds for the last value too: a difference of order k was the same twice;
+    a recurrence of order r <= 4, shortest by the algorithm of Berlekamp and Massey over the rationals (Massey 1969),
+    fits more than 2 r values; a block of 2 to 12 values came twice. Where several foretell the same value, the
+    simplest speaks for them; those that speak are mixed by Bayes, the others sleep.
     A missing row is filled with what the leading rule foretold.
     """
 
