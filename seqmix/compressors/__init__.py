@@ -1,0 +1,1 @@
+"""General-purpose compressors behind one small protocol; the models made of them are in `models/compressed.py`."""
