@@ -45,6 +45,10 @@ class KernelError(SeqmixError):
     """The kernels asked for by SEQMIX_KERNELS are not there."""
 
 
+class PluginWarning(UserWarning):
+    """A model of another package is left out; the message names it and says why."""
+
+
 def visible(text: str, limit: int = 80) -> str:
     """`text` with control, format and lone surrogate characters as escapes, cut to `limit` characters."""
     shown = "".join(

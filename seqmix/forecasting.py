@@ -11,7 +11,8 @@ import numpy as np
 from seqmix.errors import OptionError
 from seqmix.inputs import opened
 from seqmix.models.protocol import Model
-from seqmix.reading import mixture_for
+from seqmix.models.registry import SHARE
+from seqmix.reading import mixture_for, with_last
 from seqmix.series import Log, Series
 
 if TYPE_CHECKING:
@@ -79,13 +80,15 @@ def forecast(
     quantiles: Sequence[float] = (0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95),
     above: float | Sequence[float] | None = None,
     below: float | Sequence[float] | None = None,
+    compressor_share: float = SHARE,
     **reading: Any,
 ) -> Forecast | NumberForecast:
     """The law of each of the next `steps` rows of a log: a Forecast of states or bytes, a NumberForecast of numbers.
 
     log: a path, an open file, a Log, a Series, or values (strings, bytes, numbers); reading: column, time, kind,
     header, as for `seqmix.read`. models: names or objects, None for all that fit. paths: return so many joint
-    continuations too, drawn with `seed`. Raises OptionError or DataError.
+    continuations too, drawn with `seed`. compressor_share: of the run time, for the models made of compressors; 0
+    leaves them out. Raises OptionError or DataError.
     Numbers only: period, rows per repeat, one or several, instead of what the clock tells; resolution of the grid;
     quantiles, levels in (0, 1); above, below: thresholds.
     """
@@ -94,13 +97,15 @@ def forecast(
     with opened(log, **reading) as source:
         mixture = None
         last: int | None = None
-        for rows in source.chunks():
+        for rows, left in with_last(source.chunks()):
             if mixture is None:
-                mixture = mixture_for(source, rows, models, period, resolution)
+                mixture = mixture_for(source, rows, models, period, resolution, compressor_share)
+            if left >= 0:
+                mixture.rouse(left)
             mixture.absorb(rows)
             last = None if rows.times is None else int(rows.times[-1])
         if mixture is None:
-            mixture = mixture_for(source, None, models, period, resolution)
+            mixture = mixture_for(source, None, models, period, resolution, compressor_share)
         # without a cadence, the clock models take the rows ahead to come at the time of the last one
         ahead = None if last is None else [last + (source.cadence or 0) * (i + 1) for i in range(steps)]
         times = _texts(source, ahead, steps)

@@ -13,6 +13,7 @@ from seqmix.errors import OptionError, visible
 from seqmix.inputs import Held, opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Ask, Model
+from seqmix.models.registry import SHARE
 from seqmix.reading import mixture_for
 from seqmix.series import Log, Rows, Series
 from seqmix.series.clock import TimeTextError
@@ -99,6 +100,7 @@ def score(
     steps: int | None = None,
     period: int | Sequence[int] | None = None,
     resolution: float | None = None,
+    compressor_share: float = SHARE,
     **reading: Any,
 ) -> Score | NumberScore:
     """Score held-out rows: each is predicted before it is learned, and its loss in bits added up.
@@ -107,6 +109,8 @@ def score(
     a blank start; or with start=TIME those from that time on; or with `against` (a path, or a log opened with
     the alphabet of this one) the rows of that log after all of this one. frozen: nothing is learned from scored
     rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError or DataError.
+
+    compressor_share: as for `seqmix.forecast`.
 
     Numbers only: steps scores forecasts so many rows ahead too, from a moving origin; period, resolution: as for
     `seqmix.forecast`. A number or share of rows keeps the log in memory; the other choices do not.
@@ -117,11 +121,11 @@ def score(
             from seqmix.number_scoring import NumberRun
 
             def make(rows: Rows | None) -> NumberMixture:
-                return mixture_for(source, rows, models, period, resolution)  # type: ignore[return-value]
+                return mixture_for(source, rows, models, period, resolution, compressor_share)  # type: ignore[return-value]
 
             run = NumberRun(make, frozen, on_row, steps, source.cadence)
         else:
-            run = _Run(source.kind, frozen, models, on_row)
+            run = _Run(source.kind, frozen, models, compressor_share, on_row)
         if against is not None:
             for rows in source.chunks():
                 run.learn(rows)
@@ -191,9 +195,10 @@ class _Run:
         kind: str,
         frozen: bool,
         models: Sequence[str] | Sequence[Model] | None,
+        share: float,
         on_row: Callable[[Rows, np.ndarray], None] | None,
     ) -> None:
-        self._kind, self._frozen, self._models, self._on_row = kind, frozen, models, on_row
+        self._kind, self._frozen, self._models, self._share, self._on_row = kind, frozen, models, share, on_row
         self._mixture: Mixture | None = None
         self._baselines = baselines(kind)
         self._base_bits = dict.fromkeys(self._baselines, 0.0)
@@ -204,7 +209,7 @@ class _Run:
 
     def _ready(self, timed: bool) -> Mixture:
         if self._mixture is None:
-            self._mixture = Mixture(self._models, kind=self._kind, timed=timed)
+            self._mixture = Mixture(self._models, kind=self._kind, timed=timed, share=self._share)
         return self._mixture
 
     def learn(self, rows: Rows) -> None:
@@ -274,6 +279,7 @@ def summed_up(mixture: Mixture, before: tuple[np.ndarray, ...], rows: int, bits:
         mixture.weights.costs.tolist(),
         weights_before.tolist(),
         mixture.weights.now().tolist(),
+        (mixture.awake - awake_before).tolist(),
         strict=True,
     )
     return {
@@ -288,7 +294,8 @@ def summed_up(mixture: Mixture, before: tuple[np.ndarray, ...], rows: int, bits:
                 "prior_cost_bits": cost,
                 "weight_before": weight_before,
                 "weight_after": weight_after,
+                "rows_awake": awake,
             }
-            for name, loss, cost, weight_before, weight_after in columns
+            for name, loss, cost, weight_before, weight_after, awake in columns
         ],
     }

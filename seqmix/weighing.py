@@ -12,7 +12,8 @@ from seqmix.errors import OptionError
 from seqmix.inputs import opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
-from seqmix.reading import mixture_for
+from seqmix.models.registry import SHARE
+from seqmix.reading import mixture_for, with_last
 
 _POINTS = 20  # of the history, where the caller does not say how often
 
@@ -22,7 +23,7 @@ class Weights:
     """Weights along a log.
 
     history: (row, time, {model: weight}) after so many rows; the last entry is after all of them.
-    models: name, weight, bits, bits_per_row, prior_cost_bits and leading setting of each, heaviest first.
+    models: name, weight, bits, bits_per_row, prior_cost_bits, rows_awake and leading setting of each, heaviest first.
     """
 
     history: list[tuple[int, str | None, dict[str, float]]]
@@ -36,11 +37,13 @@ def weights(
     models: Sequence[str] | Sequence[Model] | None = None,
     period: int | Sequence[int] | None = None,
     resolution: float | None = None,
+    compressor_share: float = SHARE,
     **reading: Any,
 ) -> Weights:
     """The weights of all models along a log, every so many rows (None: about twenty times).
 
-    log, models, period, resolution, reading: as for `seqmix.forecast`. Raises OptionError or DataError.
+    log, models, period, resolution, compressor_share, reading: as for `seqmix.forecast`. Raises OptionError or
+    DataError.
     """
     if every is not None and every < 1:
         raise OptionError("weights can be noted every row at the most")
@@ -55,9 +58,11 @@ def weights(
             now = dict(zip(mixture.names, mixture.weights.now().tolist(), strict=True))
             history.append((mixture.rows, last, now))
 
-        for rows in source.chunks():
+        for rows, left in with_last(source.chunks()):
             if mixture is None:
-                mixture = mixture_for(source, rows, models, period, resolution)
+                mixture = mixture_for(source, rows, models, period, resolution, compressor_share)
+            if left >= 0:
+                mixture.rouse(left)
             done = 0
             while done < len(rows):
                 stop = min(len(rows), done + step - mixture.rows % step)
@@ -72,7 +77,7 @@ def weights(
                     step *= 2
             values += int((rows.codes >= 0).sum())
         if mixture is None:
-            mixture = mixture_for(source, None, models, period, resolution)
+            mixture = mixture_for(source, None, models, period, resolution, compressor_share)
         if not history or history[-1][0] != mixture.rows:
             note(mixture)
     settings = mixture.settings()
@@ -86,6 +91,7 @@ def weights(
                 "bits": float(mixture.model_bits[i]),
                 "bits_per_row": float(mixture.model_bits[i]) / max(values, 1),
                 "prior_cost_bits": float(mixture.weights.costs[i]),
+                "rows_awake": int(mixture.awake[i]),
                 "setting": settings[mixture.names[i]],
             }
             for i in order

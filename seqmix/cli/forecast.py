@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import click
 
 from seqmix.cli.number_options import Levels, for_numbers, reads_numbers, threshold
@@ -22,7 +24,7 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
 @reads_log
 @writes_answer
 def command(
-    source: Source, answer: Answer, models: list[str] | None, steps: int, paths: int | None, seed: int,
+    source: Source, answer: Answer, library: dict[str, Any], steps: int, paths: int | None, seed: int,
     quantiles: tuple[float, ...] | None, above: tuple[float, ...], below: tuple[float, ...],
     period: tuple[int, ...], resolution: float | None,
 ) -> None:  # fmt: skip
@@ -41,7 +43,7 @@ def command(
 
     with answer.open() as writer, source.open() as log:
         numbers = for_numbers(log, quantiles=quantiles, above=above, below=below, period=period, resolution=resolution)
-        forecast = seqmix.forecast(log, steps=steps, models=models, seed=seed, paths=paths, **numbers)
+        forecast = seqmix.forecast(log, steps=steps, seed=seed, paths=paths, **library, **numbers)
         if isinstance(forecast, seqmix.Forecast):
             forecast_states.write(writer, forecast)
         else:

@@ -166,15 +166,19 @@ def writes_answer(command: Function) -> Function:
 
 
 def takes_models(command: Function) -> Function:
-    """Adds --models; the command gets a list of names, or None for all."""
+    """Adds --models and --compressor-share; the command gets both as `library`, for the library's functions."""
 
-    def run(models: str | None, **others: Any) -> None:
-        command(models=[name.strip() for name in models.split(",")] if models else None, **others)
+    def run(models: str | None, compressor_share: float, **others: Any) -> None:
+        names = [name.strip() for name in models.split(",")] if models else None
+        command(library={"models": names, "compressor_share": compressor_share}, **others)
 
     return _with(
         run, command,
         option("--models", metavar="NAME,NAME",
-               help="Models to mix, see seqmix models.  [default: all for the kind of log]"),
+               help="Models to mix, see seqmix models; default names all of the library.  "
+                    "[default: all for the kind of log]"),
+        option("--compressor-share", type=click.FloatRange(0.0, 1.0), metavar="SHARE", default=0.1,
+               help="Part of the run time for models made of compressors; 0 leaves them out."),
     )  # fmt: skip
 
 

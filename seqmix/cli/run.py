@@ -9,12 +9,13 @@ from __future__ import annotations
 import os
 import signal
 import sys
+import warnings
 from collections.abc import Callable
 from types import FrameType
 from typing import Any
 
 from seqmix.cli.notes import discard, say
-from seqmix.errors import SeqmixError
+from seqmix.errors import PluginWarning, SeqmixError
 
 
 class Stopped(KeyboardInterrupt):
@@ -33,7 +34,18 @@ def main() -> int:
             # Imported here, so that a signal during the import is met as well.
             from seqmix.cli.group import run
 
-            return run(sys.argv[1:])
+            with warnings.catch_warnings():
+                warnings.simplefilter("always", PluginWarning)
+                others = warnings.showwarning
+
+                def show(message: Warning | str, category: type[Warning], *where: Any) -> None:
+                    if issubclass(category, PluginWarning):
+                        say(str(message))
+                    else:
+                        others(message, category, *where)
+
+                warnings.showwarning = show  # type: ignore[assignment]
+                return run(sys.argv[1:])
         finally:
             _on_signals(signal.SIG_DFL)
     except BaseException as error:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from contextlib import ExitStack
+from typing import Any
 
 import click
 
@@ -27,7 +28,7 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
 @reads_log
 @writes_answer
 def command(
-    source: Source, answer: Answer, models: list[str] | None, last: str | None, start: str | None,
+    source: Source, answer: Answer, library: dict[str, Any], last: str | None, start: str | None,
     against: str | None, frozen: bool, per_row: bool, steps: int | None,
     period: tuple[int, ...], resolution: float | None,
 ) -> None:  # fmt: skip
@@ -57,7 +58,7 @@ def command(
             start=start,
             against=other,
             frozen=frozen,
-            models=models,
+            **library,
             on_row=score_rows.row_writer(writer, other or log, table) if per_row else None,
             **numbers,
         )

@@ -7,7 +7,7 @@ from typing import Any
 
 from seqmix.cli.writer import Writer, bits, percent
 
-PARTS = ("name", "bits", "bits_per_row", "prior_cost_bits", "weight_before", "weight_after")
+PARTS = ("name", "bits", "bits_per_row", "prior_cost_bits", "weight_before", "weight_after", "rows_awake")
 ERRORS = ("mae", "rmse", "crps", "pinball")
 COVERED = ("coverage_50", "coverage_80", "coverage_90")
 
@@ -71,10 +71,10 @@ def _write_table(writer: Writer, record: dict[str, Any]) -> None:
     writer.fields({FIELDS[key][0]: FIELDS[key][1](value) for key, value in known.items()})
     writer.table(
         [("model", "<"), ("bits", ">"), ("bits a row", ">"), ("prior cost, bits", ">"),
-         ("weight before", ">"), ("after", ">")],
+         ("weight before", ">"), ("after", ">"), ("rows awake", ">")],
         [
             (part["name"], bits(part["bits"]), bits(part["bits_per_row"]), bits(part["prior_cost_bits"]),
-             percent(part["weight_before"]), percent(part["weight_after"]))
+             percent(part["weight_before"]), percent(part["weight_after"]), str(part["rows_awake"]))
             for part in record["models"]
         ],
     )  # fmt: skip

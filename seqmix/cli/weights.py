@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -21,7 +21,7 @@ if TYPE_CHECKING:
 @reads_log
 @writes_answer
 def command(
-    source: Source, answer: Answer, models: list[str] | None, every: int | None, period: tuple[int, ...],
+    source: Source, answer: Answer, library: dict[str, Any], every: int | None, period: tuple[int, ...],
     resolution: float | None,
 ) -> None:  # fmt: skip
     """Show which models explain LOG, and how their weights moved.
@@ -33,7 +33,7 @@ def command(
 
     with answer.open() as writer, source.open() as log:
         numbers = for_numbers(log, period=period, resolution=resolution)
-        _write(writer, seqmix.weights(log, every=every, models=models, **numbers))
+        _write(writer, seqmix.weights(log, every=every, **library, **numbers))
 
 
 def _write(writer: Writer, weights: Weights) -> None:
@@ -48,10 +48,10 @@ def _write(writer: Writer, weights: Weights) -> None:
     else:
         writer.table(
             [("model", "<"), ("leading setting", "<"), ("weight", ">"), ("bits", ">"), ("bits a row", ">"),
-             ("prior cost, bits", ">")],
+             ("prior cost, bits", ">"), ("rows awake", ">")],
             [
                 (part["name"], part["setting"], percent(part["weight"]), bits(part["bits"]),
-                 bits(part["bits_per_row"]), bits(part["prior_cost_bits"]))
+                 bits(part["bits_per_row"]), bits(part["prior_cost_bits"]), str(part["rows_awake"]))
                 for part in weights.models
             ],
         )  # fmt: skip

@@ -7,10 +7,10 @@ from collections.abc import Sequence
 
 class Brotli:
     name = "brotli"
-    summary = "code lengths of brotli: repeats in the last 2,048 rows, and words of common texts"
+    summary = "code lengths of brotli: repeats in the last 4,096 rows, and words of common texts"
     source = "RFC 7932 (Alakuijala & Szabadka 2016)"
     cost = 60.0
-    reach = 1 << 11
+    reach = 1 << 12
     informed = True
 
     def code_length(self, history: bytes, candidates: Sequence[bytes]) -> list[float]:

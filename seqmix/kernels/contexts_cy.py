@@ -28,6 +28,7 @@ else:
 ALL = cython.declare(cython.ulonglong, 0xFFFFFFFFFFFFFFFF)
 PLACE = cython.declare(cython.ulonglong, 0x9E3779B97F4A7C15)
 STIR = cython.declare(cython.ulonglong, 0xD6E8FEB86659FD93)
+DEEPEST = cython.declare(cython.longlong, 32)  # most decisions of a state
 PROBES = cython.declare(cython.longlong, 8)
 RATIO_MOST = cython.declare(cython.double, 1e30)
 RATIO_LEAST = cython.declare(cython.double, 1e-30)
@@ -344,6 +345,8 @@ def tree(
     ones: cython.double
     with cython.nogil:
         for t in range(start, n):
+            if state[1] + fresh * DEEPEST > room:
+                break
             code = codes[t]
             if want[t] >= 0:
                 _tree_law(
@@ -353,11 +356,8 @@ def tree(
             if code < 0:
                 done = t + 1
                 continue
-            if not frozen:
-                if state[1] + fresh * (path_start[code + 1] - path_start[code]) > room:
-                    break
-                if code >= state[0]:
-                    _mark(code, path_start, path, mask)
+            if not frozen and code >= state[0]:
+                _mark(code, path_start, path, mask)
             p = 1.0
             for step in range(path_start[code], path_start[code + 1]):
                 line = path[step, 0]
@@ -682,6 +682,8 @@ def pool(
     rate: cython.double
     with cython.nogil:
         for t in range(start, n):
+            if state[1] + levels * DEEPEST > room:
+                break
             code = codes[t]
             if want[t] >= 0:
                 _pool_law(
@@ -714,11 +716,8 @@ def pool(
             if code < 0:
                 done = t + 1
                 continue
-            if not frozen:
-                if state[1] + levels * (path_start[code + 1] - path_start[code]) > room:
-                    break
-                if code >= state[0]:
-                    _mark(code, path_start, path, mask)
+            if not frozen and code >= state[0]:
+                _mark(code, path_start, path, mask)
             total = 1.0
             m = 0
             hinted = 0 <= guess[t] < state[0]  # a state that was never learned cannot be hinted at

@@ -11,10 +11,11 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from seqmix.errors import OptionError
+from seqmix.errors import OptionError, SeqmixError
 from seqmix.keep import Kept
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
+from seqmix.models.numbers import Context
 from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
@@ -25,7 +26,8 @@ class Mixture(Kept):
     """A weighted Bayesian mixture of models over one log of states or bytes.
 
     models: model objects, or names of the library, or None for all that fit; kind: "states" or "bytes";
-    timed: whether rows come with times; rates: fixed-share rates of the switching half, () for static Bayes alone.
+    timed: whether rows come with times; rates: fixed-share rates of the switching half, () for static Bayes alone;
+    share: of the run time, for the compressors among models given by name.
     Codes are numbered in order of first appearance; a byte is its own code.
     """
 
@@ -38,12 +40,13 @@ class Mixture(Kept):
         kind: str = "states",
         timed: bool = False,
         rates: Sequence[float] = RATES,
+        share: float = registry.SHARE,
     ) -> None:
         names = None if models is None else [model for model in models if isinstance(model, str)]
         given = [model for model in models or () if not isinstance(model, str)]
         if names and given:
             raise OptionError("give the models by name or as objects, not both")
-        self.models: list[Model] = [*given] if given else [*self._make(kind, timed, names)]
+        self.models: list[Model] = [*given] if given else registry.make(kind, self._context(timed), names, share)
         if len(set(self.names)) < len(self.models):
             raise OptionError("two models have the same name")
         self.weights = Weights([model.prior_cost for model in self.models], rates)
@@ -52,11 +55,11 @@ class Mixture(Kept):
         self.rows = 0
         self.bits = 0.0
         self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
-        self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows predicted by each model itself
+        self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows with a value that each model predicted itself
         self.asleep = np.zeros(len(self.models), dtype=bool)  # at the last row
 
-    def _make(self, kind: str, timed: bool, names: list[str] | None) -> Sequence[Model]:
-        return registry.make(kind, timed, names)
+    def _context(self, timed: bool) -> Context:
+        return Context(timed=timed)
 
     def parts(self) -> dict[str, Kept]:
         return {"weights": self.weights}
@@ -106,13 +109,19 @@ class Mixture(Kept):
         self.asleep = asleep[-1]
         bits, before = self.weights.mix(losses, want, frozen)
         bits[rows.codes < 0] = 0.0
+        self._check(bits, rows)
         if ask is not None:
             ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
         self.rows += len(rows)
         self.bits += float(np.nansum(bits))
         self.model_bits += np.nansum(np.where(asleep, bits[:, None], losses), axis=0)
-        self.awake += (~asleep).sum(axis=0)
+        self.awake += (~asleep & (rows.codes >= 0)[:, None]).sum(axis=0)
         return bits
+
+    def _check(self, bits: Floats, rows: Rows) -> None:
+        if np.isnan(bits).any():
+            row = rows.first + int(np.argmax(np.isnan(bits)))
+            raise SeqmixError(f"no model predicts row {row + 1}; name more models, or all by default")
 
     def _admit(self, codes: npt.NDArray[np.int32]) -> None:
         """Note the states of a chunk; the models rely on new ones being numbered as they come."""
@@ -122,6 +131,12 @@ class Mixture(Kept):
         if top[0] > self.seen or (np.diff(top) > 1).any():
             raise ValueError("codes must number the states in order of first appearance")
         self.seen = int(top[-1]) + 1
+
+    def rouse(self, left: int) -> None:
+        """Tell the models that a forecast comes after `left` more rows: some that sleep wake for the last of them."""
+        for model in self.models:
+            if hasattr(model, "rouse"):
+                model.rouse(left)
 
     def in_force(self) -> dict[str, float]:
         """Weight of each model in a forecast from here, heaviest first; they add to 1, and one asleep has none."""
@@ -147,13 +162,19 @@ class Mixture(Kept):
         A continuation belongs to one model, drawn by weight, which goes on alone along it: the joint law of a
         Bayes mixture. After the first step, the models that make up the last 0.1 % of the weight are left out.
         """
-        first = self.predict(None if times is None else times[0])
+        time = None if times is None else times[0]
+        first = self.predict(time)
         laws = np.zeros((steps, len(first.masses) + 1))
         exact = steps
-        for i, weight in leading(self.weights.now()) if steps > 1 else []:
-            walk = self.models[i].walk(steps, max(int(paths * weight), FEWEST_PATHS), times)
-            laws += weight * walk.laws
-            exact = min(exact, walk.exact)
+        heavy = 0.0
+        for i, weight in leading(self._awake_weights(time)) if steps > 1 else []:
+            fewest = getattr(self.models[i], "fewest_paths", FEWEST_PATHS)
+            walk = self.models[i].walk(steps, max(int(paths * weight), fewest), times)
+            if walk is not None:
+                laws += weight * walk.laws
+                heavy += weight
+                exact = min(exact, walk.exact)
+        laws /= heavy or 1.0
         laws[0, :-1], laws[0, -1] = first.masses, first.unseen
         return Walk(laws, exact)
 
@@ -161,13 +182,17 @@ class Mixture(Kept):
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
     ) -> npt.NDArray[np.int32]:
         """Joint continuations, (paths, steps) codes in random order; the number of states seen = an unseen one."""
-        shares = split(self.weights.now(), paths, rng)
+        shares = split(self._awake_weights(None if times is None else times[0]), paths, rng)
         drawn = [
             model.sample(steps, int(share), rng, times)
             for model, share in zip(self.models, shares, strict=True)
             if share
         ]
         return rng.permutation(np.concatenate(drawn))
+
+    def _awake_weights(self, time: int | None) -> Floats:
+        """Weights of the models that foretell the next row; the others have none."""
+        return self.weights.of(np.array([model.predict(time) is not None for model in self.models]))
 
     def settings(self) -> dict[str, str]:
         """Leading setting of each model."""

@@ -13,7 +13,7 @@ from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES
 from seqmix.models import registry
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import FIRST, Context, NumbersModel
+from seqmix.models.numbers import FIRST, Context
 from seqmix.models.protocol import Ask, Floats, leading, split
 from seqmix.series.grid import Grid
 from seqmix.series.rows import Rows
@@ -35,7 +35,7 @@ class NumberMixture(Mixture):
     """A weighted Bayesian mixture of models over one log of numbers.
 
     models: objects, names of the library, or None for all that fit; context: what is known of the log
-    beforehand; resolution: of its grid, None to find it; rates: as for `Mixture`.
+    beforehand; resolution: of its grid, None to find it; rates, share: as for `Mixture`.
     The cell of a row, and the loss of what a finer value tells of the grid, are the same for every model.
     """
 
@@ -46,16 +46,17 @@ class NumberMixture(Mixture):
         context: Context | None = None,
         resolution: float | None = None,
         rates: Sequence[float] = RATES,
+        share: float = registry.SHARE,
     ) -> None:
         self.context = context or Context()
         self.grid = Grid(resolution)
         self.factor = 0.0  # what the models see is the log times this; 0: not chosen yet
         self.latest: Rows | None = None  # the rows absorbed last, with their cells
         self.latest_events = 0.0  # and the bits that they told of the grid
-        super().__init__(models, kind="numbers", timed=self.context.timed, rates=rates)
+        super().__init__(models, kind="numbers", timed=self.context.timed, rates=rates, share=share)
 
-    def _make(self, kind: str, timed: bool, names: list[str] | None) -> list[NumbersModel]:  # type: ignore[override]
-        return registry.make_numbers(self.context, names)
+    def _context(self, timed: bool) -> Context:
+        return self.context
 
     kept = (*Mixture.kept, "factor")
 
@@ -103,6 +104,9 @@ class NumberMixture(Mixture):
         """A law of the models, in the unit of the log."""
         return law if self.factor in (0.0, 1.0) else law.times(1.0 / self.factor)
 
+    def _check(self, bits: Floats, rows: Rows) -> None:
+        """A number that no model foretells has the law of the first."""
+
     def _admit(self, codes: npt.NDArray[np.int32]) -> None:
         """Numbers need no alphabet."""
 
@@ -123,8 +127,8 @@ class NumberMixture(Mixture):
         """Law of each of the next steps: each model's own, weighed by how likely it is in force there."""
         weights = self.weights.ahead(steps)
         laws: list[tuple[int, list[NumberLaw]]] = []
-        for i, _ in leading(weights.max(axis=0)):
-            ahead = self.models[i].walk(steps, paths, times)
+        for i, weight in leading(weights.max(axis=0)):
+            ahead = self.models[i].walk(steps, int(paths * weight), times)
             if ahead is not None:
                 laws.append((i, ahead))  # type: ignore[arg-type]
         if not laws:

@@ -15,7 +15,7 @@ from seqmix.models.laws import UNIFORM, Floats, NumberLaw
 from seqmix.models.novelty import Novelty
 from seqmix.models.numbers import Context, NumbersModel
 from seqmix.models.pool import Pool
-from seqmix.models.protocol import Ask
+from seqmix.models.protocol import Ask, StatesModel
 from seqmix.series.rows import Rows
 
 MOST = 16
@@ -44,6 +44,7 @@ class Bins(NumbersModel):
     prior_cost = 5.0
     summary = "steps cut into bins, foretold from the bins before as states are"
     source = "Genest & Zidek 1986; Mattern 2012"
+    fewest_paths = 4 * _SPOTS
 
     kept = ("rows", "awake", "last", "width", "steps", "centres", "scales", "shares", "starts", "edges", "codes")
 
@@ -62,11 +63,21 @@ class Bins(NumbersModel):
         self.starts = np.zeros(0, dtype=np.intp)
         self.codes = np.zeros(0, dtype=np.int32)  # of the bins, in order of appearance
         self._base = Broad()
-        self._pool = Pool()
+        self._states = self._first()
         self._novelty = Novelty(0)
 
+    def _first(self) -> StatesModel:
+        """What foretells the bins, blank."""
+        return Pool()
+
+    def _taught(self, codes: Codes) -> StatesModel:
+        """The same, for new bins, taught these codes."""
+        pool = Pool()
+        pool.absorb(Rows(codes, None, 0))
+        return pool
+
     def parts(self) -> dict[str, Kept]:
-        return {"base": self._base, "novelty": self._novelty, "pool": self._pool}
+        return {"base": self._base, "novelty": self._novelty, "states": self._states}
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         assert rows.values is not None
@@ -107,8 +118,7 @@ class Bins(NumbersModel):
             self.codes = np.empty(len(found), dtype=np.int32)
             self.codes[found[np.argsort(first)]] = np.arange(len(found))
             codes = np.where(bins >= 0, self.codes[bins], -1).astype(np.int32)
-            self._pool, self._novelty = Pool(), Novelty(0)
-            self._pool.absorb(Rows(codes, None, 0))
+            self._states, self._novelty = self._taught(codes), Novelty(0)
             self._novelty.absorb(codes)
 
     def _shape(self, left: Floats, right: Floats) -> None:
@@ -150,6 +160,9 @@ class Bins(NumbersModel):
             return np.full(len(rows), nan)
         bins = self._bins(steps)
         codes = np.where(bins >= 0, self.codes[bins], -1).astype(np.int32)
+        if self._states.sleeps(len(rows)):
+            self._novelty.absorb(codes, frozen)
+            return self._states.absorb(Rows(codes, None, self.rows), None, frozen)
         asleep = np.abs(before) >= _LARGE
         clear = there & ~asleep
         inside = self._inside(np.where(clear, values, 0.0), widths, np.where(clear, before, 0.0))
@@ -161,14 +174,15 @@ class Bins(NumbersModel):
         inside[at] = own
         wanted = Ask.of(len(rows), torn, len(self.codes)) if len(torn) else None
         novel, unseen = self._novelty.absorb(codes, frozen)
-        pooled = self._pool.absorb(Rows(codes, None, self.rows), wanted, frozen) - novel
+        pooled = self._states.absorb(Rows(codes, None, self.rows), wanted, frozen) - novel
         with np.errstate(divide="ignore"):
             mass = np.log2(own) - pooled
             if wanted is not None:
                 laws = wanted.laws[:, self.codes] / (1.0 - unseen[torn])[:, None]
                 mass[torn] = np.log2((laws * inside[torn]).sum(axis=1))
+        mass[np.isnan(pooled)] = -np.inf
         bits = -np.logaddexp2(np.log2(1 - _STRAY) + mass, np.log2(_STRAY) - base)
-        return np.where(asleep, nan, bits)
+        return np.where(asleep | np.isnan(pooled), nan, bits)
 
     def _inside(self, values: Floats, widths: Floats, before: Floats) -> Floats:
         """Mass of each cell within each bin, (n, bins)."""
@@ -182,9 +196,10 @@ class Bins(NumbersModel):
         return np.add.reduceat(share, self.starts, axis=1)
 
     def predict(self, time: int | None = None) -> NumberLaw | None:
-        if not self._sees():
+        law = self._states.predict() if self._sees() else None
+        if law is None:
             return None
-        masses = self._pool.predict().masses[self.codes]
+        masses = law.masses[self.codes]
         owner = np.searchsorted(self.starts, np.arange(len(self.centres)), side="right") - 1
         base = self._base.law()
         return NumberLaw.of(
@@ -202,7 +217,7 @@ class Bins(NumbersModel):
         base = self._base.law()
         laws = [first]
         if steps > 1:
-            drawn = self.sample(steps, max(paths, 4 * _SPOTS), np.random.default_rng(0))[:, 1:]
+            drawn = self.sample(steps, max(paths, self.fewest_paths), np.random.default_rng(0))[:, 1:]
             for spots in np.quantile(drawn, np.linspace(0.0, 1.0, _SPOTS + 1), axis=0).T:
                 laws.append(
                     NumberLaw.of(
@@ -220,7 +235,7 @@ class Bins(NumbersModel):
         """Bins from the pool, as it stands, and a step from each; the broad law only while asleep."""
         if not self._sees():
             return self._base.law().draw(rng, paths * steps).reshape(paths, steps)
-        codes = self._pool.sample(steps, paths, rng, times)
+        codes = self._states.sample(steps, paths, rng, times)
         bins: npt.NDArray[np.intp] = np.argsort(self.codes)[codes % len(self.codes)]
         # the pieces of all bins end to end, each bin one long
         ends = np.cumsum(self.shares)

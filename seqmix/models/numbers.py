@@ -134,6 +134,9 @@ class NumbersModel(Kept, ABC):
         """The leading setting, in a few words; empty where there is one only."""
         return ""
 
+    def rouse(self, left: int) -> None:
+        """A forecast comes after `left` more rows: a model that sleeps may wake for it."""
+
 
 class NumberBank(NumbersModel):
     """A bank of settings, each with a standard law of the next row, mixed inside by Bayes.

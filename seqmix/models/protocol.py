@@ -22,7 +22,8 @@ from seqmix.series.rows import Rows
 
 Floats = npt.NDArray[np.float64]
 
-FEWEST_PATHS = 512  # continuations that even a light setting may follow
+FEWEST_PATHS = 512
+"""Continuations that even a light model or setting may follow."""
 
 
 class Ask:
@@ -140,6 +141,7 @@ class StatesModel(Kept, ABC):
     summary: str  # one line
     source: str  # the paper
     needs_times: bool = False
+    fewest_paths: int = FEWEST_PATHS
 
     kept = ("seen",)
 
@@ -178,7 +180,8 @@ class StatesModel(Kept, ABC):
             ask.laws[:] = np.einsum("mi,imk->mk", weights, np.stack(laws))
             ask.laws *= (1.0 - unseen[ask.at])[:, None]
             ask.laws[:, -1] = unseen[ask.at]
-        return np.where(codes < 0, 0.0, bits + novel)
+        # a missing row costs nothing, but NaN, asleep, stays
+        return np.where((codes < 0) & ~np.isnan(bits), 0.0, bits + novel)
 
     def predict(self, time: int | None = None) -> StatesLaw:
         fork = self._history.fork(1, time)
@@ -217,7 +220,7 @@ class StatesModel(Kept, ABC):
         exact = steps
         for i, weight in leading(self._weights.now()):
             part, steps_exact = self._walk_setting(
-                self.settings[i], steps, max(int(paths * weight), FEWEST_PATHS), when
+                self.settings[i], steps, max(int(paths * weight), self.fewest_paths), when
             )
             laws += weight * part
             exact = min(exact, steps_exact)
@@ -253,6 +256,13 @@ class StatesModel(Kept, ABC):
 
     def setting(self) -> str:
         return self.settings[int(np.argmax(self._weights.now()))].label if len(self.settings) > 1 else ""
+
+    def sleeps(self, rows: int) -> bool:
+        """Whether none of the next `rows` rows will be predicted."""
+        return False
+
+    def rouse(self, left: int) -> None:
+        """A forecast comes after `left` more rows: a model that sleeps may wake for it."""
 
 
 def leading(weights: Floats) -> list[tuple[int, float]]:

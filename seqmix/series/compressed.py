@@ -76,7 +76,7 @@ def unzstd(blocks: Blocks) -> Blocks:
 
 def unbrotli(blocks: Blocks) -> Blocks:
     """brotli: one stream."""
-    import brotli  # type: ignore[import-untyped]
+    import brotli
 
     stream = brotli.Decompressor()
     for block in blocks:

@@ -125,6 +125,17 @@ def _laws(lines: int, states: int, seed: int, evenness: float) -> Floats:
     return laws / laws.sum(axis=1, keepdims=True)
 
 
+def noisy_repeats(seed: int, rows: int = 6000, states: int = 6, programs: int = 8, noise: float = 0.01) -> Codes:
+    """Programs of 60 to 200 rows, one after the other in random order; some rows are replaced by any state."""
+    rng = np.random.default_rng(seed)
+    library = [rng.integers(0, states, rng.integers(60, 201)) for _ in range(programs)]
+    made: list[Codes] = []
+    while sum(map(len, made)) < rows:
+        made.append(library[rng.integers(programs)])
+    codes = np.concatenate(made)[:rows]
+    return by_appearance(np.where(rng.random(rows) < noise, rng.integers(0, states, rows), codes))
+
+
 def by_appearance(codes: Codes) -> Codes:
     """The same states numbered in the order in which they first appear."""
     _, first, which = np.unique(codes, return_index=True, return_inverse=True)

@@ -10,7 +10,9 @@ more; each of R rates log2(R) more. All in bits, all for any losses whatever.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -22,6 +24,8 @@ from logs import by_appearance
 from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
+from seqmix.models.numbers import Context
+from seqmix.models.protocol import Model
 from seqmix.series.rows import CHUNK, Rows
 
 DATA = Path(__file__).parents[1] / "data"
@@ -195,7 +199,7 @@ def real_losses(request: pytest.FixtureRequest) -> tuple[np.ndarray, np.ndarray]
     """Losses of every model of the library on a real log, (rows, models), and their prior costs."""
     kind, codes = real(request.param)
     chunks = [Rows(codes[at : at + CHUNK], None, at) for at in range(0, len(codes), CHUNK)]
-    models = registry.make(kind, timed=False)
+    models = registry.make(kind, Context(), share=0.0)  # those that never sleep
     losses = np.stack([np.concatenate([model.absorb(rows) for rows in chunks]) for model in models], axis=1)
     return losses, np.array([model.prior_cost for model in models])
 
@@ -219,6 +223,36 @@ def test_specialists_on_real_logs(real_losses: tuple[np.ndarray, np.ndarray]) ->
     for i, cost in enumerate(weights.costs):
         awake = ~np.isnan(losses[:, i])
         assert bits[awake].sum() <= losses[awake, i].sum() + cost + 1e-6
+
+
+@pytest.mark.parametrize("name", ["alice29, the first 20,000 bytes", "phiX174"])
+def test_compressors_that_sleep_keep_the_bound_of_specialists(name: str) -> None:
+    """Freund, Schapire, Singer & Warmuth 1997: on its waking rows, no more than the model's loss and its prior cost."""
+    kind, codes = real(name)
+    models = registry.make(kind, Context(), share=0.5)
+    mixture = Mixture(models, kind=kind, rates=())
+    losses = []
+
+    def watched(model: Model) -> Callable[..., np.ndarray]:
+        absorb = model.absorb
+
+        def both(*of: Any) -> np.ndarray:
+            bits = absorb(*of)
+            losses.append((model.name, bits))
+            return bits
+
+        return both
+
+    for model in models:
+        model.absorb = watched(model)
+    bits = np.concatenate([mixture.absorb(codes[at : at + 500]) for at in range(0, 10_000, 500)])
+    slept = 0
+    for name, cost in zip(mixture.names, mixture.weights.costs, strict=True):
+        own = np.concatenate([part for one, part in losses if one == name])[: len(bits)]
+        awake = ~np.isnan(own)
+        slept += int((~awake).sum())
+        assert bits[awake].sum() <= own[awake].sum() + cost + 1e-6
+    assert slept > 1000
 
 
 @pytest.mark.parametrize("name", ["alice29, the first 20,000 bytes", "phiX174"])

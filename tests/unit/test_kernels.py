@@ -17,26 +17,34 @@ ROOT = Path(seqmix.__file__).parent
 
 PRINT = """
 import hashlib, json, sys
-sys.path.insert(0, sys.argv[1])
-from test_models import every, log, make
-from seqmix import kernels
+from seqmix import kernels, testing
 from seqmix.mixture.mixture import Mixture
+from seqmix.mixture.numbers import NumberMixture
+from seqmix.models import registry
+from seqmix.models.compressed import Compressed
 out = {"mode": kernels.MODE}
-for kind, model in every():
-    one, rows = make(kind, model), log(kind, 700)
-    bits = one.absorb(rows)
-    law = one.predict(None if rows.times is None else int(rows.times[-1]) + 60_000_000)
-    out[f"{kind} {model.name}"] = hashlib.sha256(bits.tobytes() + law.masses.tobytes()).hexdigest()
+for model in registry.MODELS:
+    for kind in model.kinds:
+        one = testing.made(model, kind)()
+        rows = testing.states_log(kind, 100 if issubclass(model, Compressed) else 700)
+        bits = one.absorb(rows)
+        law = one.predict(None if rows.times is None else int(rows.times[-1]) + 60_000_000)
+        out[f"{kind} {model.name}"] = hashlib.sha256(bits.tobytes() + law.masses.tobytes()).hexdigest()
 for kind in ("states", "bytes"):
-    bits = Mixture(kind=kind).absorb(log(kind, 700).codes)
+    bits = Mixture(kind=kind).absorb(testing.states_log(kind, 700).codes)
     out[kind] = hashlib.sha256(bits.tobytes()).hexdigest()
+for name, log in testing.NUMBER_LOGS.items():
+    mixture = NumberMixture(context=testing.CONTEXT)
+    bits = mixture.absorb(log(150))
+    quantiles = mixture.predict().quantile([0.1, 0.5, 0.9])
+    out[f"numbers {name}"] = hashlib.sha256(bits.tobytes() + quantiles.tobytes()).hexdigest()
 print(json.dumps(out))
 """
 
 
 def digests(mode: str) -> dict[str, str]:
     done = subprocess.run(
-        [sys.executable, "-c", PRINT, str(Path(__file__).parent)],
+        [sys.executable, "-c", PRINT],
         env={**os.environ, "SEQMIX_KERNELS": mode}, capture_output=True, text=True, check=True, timeout=300,
     )  # fmt: skip
     return json.loads(done.stdout)

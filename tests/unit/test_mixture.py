@@ -18,6 +18,7 @@ from seqmix.mixture import mixture as module
 from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
+from seqmix.models.numbers import Context
 from seqmix.models.protocol import Ask, Model, StatesLaw, Walk
 from seqmix.series.rows import Rows
 
@@ -190,14 +191,14 @@ def test_asking_does_not_change_losses() -> None:
 
 
 def test_sums_it_keeps() -> None:
-    rows, one = log("states", False, 900), Mixture()
+    rows, one = log("states", False, 900), Mixture(share=0.0)
     bits = one.absorb(rows)
     assert one.rows == 900
     assert one.seen == int(rows.codes.max()) + 1
     assert one.bits == pytest.approx(bits.sum())
-    alone = [model.absorb(rows).sum() for model in registry.make("states", timed=False)]
+    alone = [model.absorb(rows).sum() for model in registry.make("states", Context(), share=0.0)]
     np.testing.assert_allclose(one.model_bits, alone)
-    assert one.awake.tolist() == [900] * len(one.models)
+    assert one.awake.tolist() == [int((rows.codes >= 0).sum())] * len(one.models)
 
 
 @pytest.mark.parametrize(
@@ -389,7 +390,7 @@ def test_models_given_as_objects() -> None:
 
 
 def test_a_library_model_beside_one_of_ones_own() -> None:
-    one = Mixture([*registry.make("states", timed=False, names=["markov"]), Coin("own", 0.9)])
+    one = Mixture([*registry.make("states", Context(), ["markov"]), Coin("own", 0.9)])
     assert one.names == ["markov", "own"]
     one.absorb([0, 1])
     assert np.isfinite(one.absorb(flips(200, 0.9))).all()
