@@ -1,6 +1,6 @@
 """Invents the cleaning of the milk tank in a small dairy: a run a file, the state of its valves and pump a row.
 
-    python make_runs.py --day 3 runs/day-03.txt
+    python make_runs.py --day 3 runs/day-3.txt
     python make_runs.py --day 9 runs/today.txt
 
 Every five seconds the controller writes which valve is open and whether the pump runs: `water+pump`, `lye`, `drain`.

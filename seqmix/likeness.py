@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
+from fractions import Fraction
+from math import gcd
 from typing import Any
 
 import numpy as np
@@ -16,6 +18,9 @@ from seqmix.reading import mixture_for
 from seqmix.series import MISSING, Alphabet, Log, Rows, Series
 from seqmix.series.grid import Grid
 
+NOTHING = 1e-6
+"""Bits that are rounding errors: a log of one state costs none."""
+
 Watch = Callable[[Iterable[Rows]], Iterator[Rows]]
 
 
@@ -25,8 +30,8 @@ class Pair:
 
     log, known_first: their names. rows: of `log` that have a value. bits_alone: their loss from a blank start.
     bits_after: their loss after all of `known_first`. saved_bits: the difference; negative where the known log
-    misleads. saved_share: of bits_alone, None where these are 0. distance: normalised compression distance of the
-    two, symmetric. distances: the same by each compressor alone.
+    misleads. saved_share: of bits_alone, None where these are next to 0. distance: normalised compression distance
+    of the two, symmetric. distances: the same by each compressor alone.
     """
 
     log: str
@@ -46,7 +51,7 @@ class Likeness:
 
     pairs: for each log in turn, the others, nearest first: that which saves the largest share of its bits.
     names: of the logs, in the order given; a name that comes again has its count behind it: "a.csv (2)".
-    resolution: of the grid that logs of numbers share, the finest among them; None for other kinds.
+    resolution: of the grid that logs of numbers share, the coarsest on which all lie; None for other kinds.
     """
 
     pairs: list[Pair]
@@ -72,8 +77,8 @@ def alike(
     what the others save for this one is answered then. models: names, None for all that fit. watch: rows pass
     through it as the models read them, to show progress. reading: column, time, kind, header, as for `seqmix.read`.
 
-    The bits after are those of `score(known_first, against=log)`. Logs of numbers share the finest resolution found
-    among them, and the cadence of the first. Times count where every log has them.
+    The bits after are those of `score(known_first, against=log)`. Logs of numbers share the coarsest grid on which
+    all lie, and the cadence of the first. Times count where every log has them.
     n logs take n * n readings by the models, with `to` 2 n + 1. Raises OptionError or DataError.
     """
     if models is not None and not all(isinstance(model, str) for model in models):
@@ -96,6 +101,7 @@ class _Logs:
     def __init__(self, watch: Watch) -> None:
         self.logs: list[Log | Series] = []
         self._held: list[Held] = []
+        self._timed = True  # all of them, so far
         self._watch = watch
 
     def add(self, log: Any, reading: dict[str, Any]) -> None:
@@ -108,31 +114,34 @@ class _Logs:
                 )
             if isinstance(source, Series):
                 source = source.slice(0)  # an alphabet of its own: states that others brought do not count
-            self._held.append(Held(source))
+            held = Held(source)
+            self._timed = self._timed and all(rows.times is not None for rows in held.chunks())
+            self._held.append(held)
             self.logs.append(source)
 
     def compare(self, models: Sequence[str] | None, targets: Sequence[int]) -> Likeness:
         names = _distinct([log.name for log in self.logs])
-        self._timed = all(rows.times is not None for held in self._held for rows in held.chunks())
         numbers = self.logs[0].kind == "numbers"
-        resolution = self._finest() if numbers else None
+        resolution = self._resolution() if numbers else None
         first = next((rows for i in range(len(self.logs)) for rows in self._rows(i)), None)
 
-        def blank() -> Mixture:
-            return mixture_for(self.logs[0], first, models, resolution=resolution)
+        def learn(rows: Iterable[Rows], state: dict[str, Any]) -> tuple[float, Mixture]:
+            """Bits that a mixture loses on these rows, from a blank start or a `state` on; and the mixture."""
+            mixture = mixture_for(self.logs[0], first, models, resolution=resolution)
+            if state:
+                mixture.restore(state)
+            return sum(float(mixture.absorb(part).sum()) for part in self._watch(rows)), mixture
 
         distances = Distances(self._texts(resolution))
         alone: dict[int, float] = {}
         after: dict[tuple[int, int], float] = {}
         for known in range(len(self.logs)):
-            mixture = blank()
-            alone[known] = self._learn(mixture, self._rows(known))
-            state = mixture.state() if any(log != known for log in targets) else {}
+            alone[known], mixture = learn(self._rows(known), {})
+            state = mixture.state()
+            del mixture  # the tables of one are large
             for log in targets:
                 if log != known:
-                    mixture = blank()
-                    mixture.restore(state)
-                    after[log, known] = self._learn(mixture, self._rows(log, known))
+                    after[log, known] = learn(self._rows(log, known), state)[0]
         pairs = []
         for log in targets:
             rows = sum(int((part.codes >= 0).sum()) for part in self._held[log].chunks())
@@ -144,15 +153,11 @@ class _Logs:
                     others.append(
                         Pair(
                             names[log], names[known], rows, alone[log], after[log, known], saved,
-                            saved / alone[log] if alone[log] else None, distance.pop("least"), distance,
+                            saved / alone[log] if alone[log] > NOTHING else None, distance.pop("least"), distance,
                         )
                     )  # fmt: skip
             pairs += sorted(others, key=lambda pair: -pair.saved_bits)
         return Likeness(pairs, names, resolution)
-
-    def _learn(self, mixture: Mixture, rows: Iterable[Rows]) -> float:
-        """Bits that the mixture loses on these rows, from where it stands."""
-        return sum(float(mixture.absorb(part).sum()) for part in self._watch(rows))
 
     def _rows(self, log: int, known: int | None = None) -> Iterator[Rows]:
         """The rows of a log; its states numbered as those that follow after the log `known`."""
@@ -165,16 +170,16 @@ class _Logs:
         """(states + 1,) int32: the code in `alphabet` of each state of a log, which is added when new; and MISSING."""
         return np.array([*map(alphabet.encode, self.logs[log].alphabet.labels), MISSING], dtype=np.int32)
 
-    def _finest(self) -> float:
-        """The finest resolution among the logs that have a value."""
-        found = []
+    def _resolution(self) -> float:
+        """Of the coarsest grid that holds those of all logs that have a value."""
+        common = Fraction(0)
         for held in self._held:
             grid = Grid()
             for rows in held.chunks():
                 grid.cells(np.asarray(rows.values))
             if any((rows.codes >= 0).any() for rows in held.chunks()):
-                found.append(grid.resolution)
-        return min(found, default=1.0)
+                common = _common_divisor(common, Fraction(repr(grid.resolution)))
+        return min(max(float(common), 1e-300), 1e300) if common else 1.0
 
     def _texts(self, resolution: float | None) -> list[bytes]:
         """Each log as bytes for the compressors, in one alphabet."""
@@ -193,6 +198,11 @@ class _Logs:
             b"".join(text_of_codes(code[rows.codes], states) for rows in held.chunks())
             for code, held in zip(codes, self._held, strict=True)
         ]
+
+
+def _common_divisor(one: Fraction, other: Fraction) -> Fraction:
+    whole = gcd(one.numerator * other.denominator, other.numerator * one.denominator)
+    return Fraction(whole, one.denominator * other.denominator)
 
 
 def _distinct(names: Sequence[str]) -> list[str]:

@@ -31,12 +31,12 @@ COLUMNS = ("log", "known_first", "bits_alone", "bits_after", "saved_bits", "save
 def command(
     source: Source, answer: Answer, logs: tuple[str, ...], models: list[str] | None, to: str | None, matrix: bool
 ) -> None:
-    """Show which logs are alike: how many bits each saves when another one is known first.
+    """Show how many bits each log saves if another is known first.
 
     The models read one log, then go on with the other; what that one costs less than from a blank start is
-    saved. For each log the others follow, nearest first: that which saves the largest share of its bits. Negative
-    shares mean that it misleads. The distance is what compressors say of the pair: about 0 alike, 1 not at all.
-    All logs are of one kind, and read in the same way.
+    saved. For each log the others follow, nearest first: that which saves the largest share of its bits. A
+    negative share means that it misleads. The distance is what compressors say of the pair: about 0 if they are
+    alike, about 1 if not at all. All logs are of one kind, and read in the same way.
     """
     context = click.get_current_context()
     others = [log for log in logs if log != to]
@@ -50,13 +50,16 @@ def command(
     progress = Progress()
     with answer.open() as writer, ExitStack() as stack:
         stack.callback(progress.erase)
+        target = None if to is None else stack.enter_context(replace(source, path=to, quiet=True).open())
         likeness = seqmix.alike(
             _opened(source, others, notes),
-            to=None if to is None else stack.enter_context(replace(source, path=to, quiet=True).open()),
+            to=target,
             models=models,
             watch=progress.count if source.watched else None,
         )
         (_write_matrix if matrix else _write)(writer, likeness)
+    if target is not None:
+        _remember(target, notes)
     if not source.quiet:
         for note, names in notes.items():
             more = f" and {len(names) - 1} more" if len(names) > 1 else ""
@@ -68,8 +71,12 @@ def _opened(source: Source, paths: Sequence[str], notes: dict[str, list[str]]) -
     for path in paths:
         with replace(source, path=path).open(notes=False) as log:
             yield log
-        for note in log.notes:
-            notes.setdefault(note, []).append(log.name)
+        _remember(log, notes)
+
+
+def _remember(log: Log, notes: dict[str, list[str]]) -> None:
+    for note in log.notes:
+        notes.setdefault(note, []).append(log.name)
 
 
 def _write(writer: Writer, likeness: Likeness) -> None:
