@@ -49,21 +49,23 @@ def command(
     notes: dict[str, list[str]] = {}
     progress = Progress()
     with answer.open() as writer, ExitStack() as stack:
-        stack.callback(progress.erase)
         target = None if to is None else stack.enter_context(replace(source, path=to, quiet=True).open())
-        likeness = seqmix.alike(
-            _opened(source, others, notes),
-            to=target,
-            models=models,
-            watch=progress.count if source.watched else None,
-        )
+        try:
+            likeness = seqmix.alike(
+                _opened(source, others, notes),
+                to=target,
+                models=models,
+                watch=progress.count if source.watched else None,
+            )
+        finally:
+            progress.erase()
         (_write_matrix if matrix else _write)(writer, likeness)
     if target is not None:
         _remember(target, notes)
     if not source.quiet:
         for note, names in notes.items():
             more = f" and {len(names) - 1} more" if len(names) > 1 else ""
-            say(f"{visible(names[0])}{more}: {note}")
+            say(f"{names[0]}{more}: {note}")
 
 
 def _opened(source: Source, paths: Sequence[str], notes: dict[str, list[str]]) -> Iterator[Log]:

@@ -43,7 +43,7 @@ def runs(tmp_path: Path, kind: str) -> list[Path]:
     if kind == "numbers":
         rng = np.random.default_rng(3)
         return [
-            write(tmp_path / f"{i}.txt", [f"{value:.1f}" for value in 4 + 0.5 * rng.normal(size=60).cumsum()] + ["NA"])
+            write(tmp_path / f"{i}.txt", [f"{value:.1f}" for value in 4 + 0.5 * rng.normal(size=30).cumsum()] + ["NA"])
             for i in range(3)
         ]
     if kind == "timed":
