@@ -49,3 +49,6 @@ seqmix score crates.csv --steps 7 --quiet --format table
 
 show "Three ways in which the next week may go"
 seqmix forecast crates.csv --steps 7 --paths 3 --quiet --format table
+
+show "The tank is cleaned: which of the last eight runs does today's look like?"
+seqmix alike runs/day-*.txt --to runs/today.txt --quiet --format table

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from seqmix.describing import Description, describe
     from seqmix.errors import SeqmixError
     from seqmix.forecasting import Forecast, forecast
+    from seqmix.likeness import Likeness, alike
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
@@ -26,12 +27,14 @@ if TYPE_CHECKING:
 _HOME = {
     "Description": "seqmix.describing",
     "Forecast": "seqmix.forecasting",
+    "Likeness": "seqmix.likeness",
     "Log": "seqmix.series",
     "Mixture": "seqmix.mixture.mixture",
     "Score": "seqmix.scoring",
     "SeqmixError": "seqmix.errors",
     "Series": "seqmix.series",
     "Weights": "seqmix.weighing",
+    "alike": "seqmix.likeness",
     "describe": "seqmix.describing",
     "forecast": "seqmix.forecasting",
     "open_log": "seqmix.series",
@@ -43,6 +46,7 @@ _HOME = {
 __all__ = [
     "Description",
     "Forecast",
+    "Likeness",
     "Log",
     "Mixture",
     "Score",
@@ -50,6 +54,7 @@ __all__ = [
     "Series",
     "Weights",
     "__version__",
+    "alike",
     "describe",
     "forecast",
     "open_log",

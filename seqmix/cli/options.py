@@ -77,6 +77,11 @@ class Source:
     header: bool | None
     quiet: bool
 
+    @property
+    def watched(self) -> bool:
+        """Whether progress is shown."""
+        return not self.quiet and sys.stderr is not None and sys.stderr.isatty()
+
     @contextmanager
     def open(self, notes: bool = True) -> Iterator[Log]:
         """The log, with progress while it is read; what was assumed is told (`notes`) when all went well."""
@@ -97,7 +102,7 @@ class Source:
 
         progress = Progress()
         with open_log(place, column=self.column, time=self.time, header=self.header, **more) as log:
-            if not self.quiet and sys.stderr is not None and sys.stderr.isatty():
+            if self.watched:
                 chunks = log.chunks
                 log.chunks = lambda: progress.count(chunks())  # type: ignore[method-assign]
             try:
@@ -129,16 +134,24 @@ class Answer:
 
 def reads_log(command: Function) -> Function:
     """Adds LOG and the options on reading it; the command gets them as `source`."""
+    return _reads(command, click.argument("log", required=False, type=click.Path(allow_dash=True)))
 
+
+def reads_logs(command: Function) -> Function:
+    """Adds LOG LOG... and the same options; the command gets `logs`, and a `source` whose path is to be filled in."""
+    logs = click.argument("logs", nargs=-1, metavar="LOG LOG...", type=click.Path(allow_dash=True))
+    return _reads(command, logs)
+
+
+def _reads(command: Function, argument: Function) -> Function:
     def run(
-        log: str | None, kind: str | None, column: str | None, time: str | None, header: bool | None,
-        quiet: bool, **others: Any,
+        kind: str | None, column: str | None, time: str | None, header: bool | None, quiet: bool,
+        log: str | None = None, **others: Any,
     ) -> None:  # fmt: skip
         command(source=Source(log, kind, column, time, header, quiet), **others)
 
     return _with(
-        run, command,
-        click.argument("log", required=False, type=click.Path(allow_dash=True)),
+        run, command, argument,
         option("--as", "kind", type=click.Choice(["states", "numbers", "bytes"]),
                help="What a row is.  [default: found in the log]"),
         option("--column", metavar="NAME|NUMBER",

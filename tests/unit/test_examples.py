@@ -34,6 +34,8 @@ SAMPLES = {
     "alarms.txt": ("make_line.py", "--codes"),
     "tank.csv": ("make_tank.py",),
     "crates.csv": ("make_tank.py", "--crates"),
+    **{f"runs/day-{day}.txt": ("make_runs.py", "--day", str(day)) for day in range(1, 9)},
+    "runs/today.txt": ("make_runs.py", "--day", "9"),
 }
 
 SESSION = re.compile(r"```console\n\$ (?P<command>.*)\n(?P<shown>(?:.*\n)*?)```\n")
@@ -75,6 +77,7 @@ def run_snippet(code: str, names: dict[str, object]) -> str:
 def test_samples_are_what_the_scripts_write(name: str, tmp_path: Path) -> None:
     made, kept = tmp_path / name, EXAMPLES / name
     script, *options = SAMPLES[name]
+    made.parent.mkdir(exist_ok=True)
     subprocess.run([sys.executable, EXAMPLES / script, *options, made], check=True)
     open_it = gzip.open if name.endswith(".gz") else open
     with open_it(made, "rb") as new, open_it(kept, "rb") as old:
