@@ -35,8 +35,9 @@ for kind in ("states", "bytes"):
     out[kind] = hashlib.sha256(bits.tobytes()).hexdigest()
 for name, log in testing.NUMBER_LOGS.items():
     mixture = NumberMixture(context=testing.CONTEXT)
-    bits = mixture.absorb(log(150))
-    quantiles = mixture.predict().quantile([0.1, 0.5, 0.9])
+    rows = log(150)
+    bits = mixture.absorb(rows)
+    quantiles = mixture.predict(int(rows.times[-1]) + testing.HOUR).quantile([0.1, 0.5, 0.9])
     out[f"numbers {name}"] = hashlib.sha256(bits.tobytes() + quantiles.tobytes()).hexdigest()
 print(json.dumps(out))
 """
