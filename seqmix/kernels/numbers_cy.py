@@ -15,10 +15,11 @@ except ModuleNotFoundError:
     from seqmix.kernels import shim as cython
 
 if cython.compiled:
-    from cython.cimports.libc.math import exp, fabs, log, log1p, sqrt
+    from cython.cimports.libc.math import atan2, exp, fabs, log, log1p, sqrt
 else:
-    from math import exp, fabs, log, log1p, sqrt
+    from math import atan2, exp, fabs, log, log1p, sqrt
 
+PI = cython.declare(cython.double, 3.141592653589793)
 LN2 = cython.declare(cython.double, 0.6931471805599453)
 LOG_SQRT_2PI = cython.declare(cython.double, 0.9189385332046727)
 EVEN = cython.declare(cython.double, 0.2)  # widths, in scales, up to which density times width will do: even grid
@@ -86,6 +87,15 @@ def _student_tail(z: cython.double, df: cython.double, norm: cython.double) -> c
     front: cython.double
     if z == 0.0:
         return 0.5
+    if df == 1.0:
+        return atan2(1.0, z) / PI
+    if df == 2.0:
+        front = sqrt(2.0 + z * z)
+        return 1.0 / (front * (front + z))
+    if df == 4.0:
+        front = sqrt(4.0 + z * z)
+        front = 4.0 / (front * (front + z))
+        return 0.25 * front * front * (3.0 - front)
     # x^(df/2) (1-x)^(1/2) / B(df/2, 1/2), from the density at 0, which is 1 / (sqrt(df) B)
     front = exp(norm + 0.5 * log(df) - 0.5 * df * log1p(square)) * sqrt(square / (1.0 + square))
     if x < (0.5 * df + 1.0) / (0.5 * df + 2.5):

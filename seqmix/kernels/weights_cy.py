@@ -59,7 +59,7 @@ def _weights(
     before: cython.double[:, ::1],
     at: cython.Py_ssize_t,
 ) -> cython.void:
-    """before[at] = weight of every model awake, over all camps; in each camp those awake add to its weight."""
+    """before[at] = weight of every model awake, over all camps; in each camp those awake add to its weight; sum 1."""
     i: cython.Py_ssize_t
     r: cython.Py_ssize_t
     part: cython.double
@@ -70,6 +70,11 @@ def _weights(
         for i in range(behind.shape[0]):
             if chance[i] >= 0.0:
                 before[at, i] += part * shares[r, i]
+    part = 0.0
+    for i in range(behind.shape[0]):
+        part += before[at, i]
+    for i in range(behind.shape[0]):  # the camps add to 1 but for rounding
+        before[at, i] /= part
 
 
 def update(

@@ -16,7 +16,7 @@ from seqmix.keep import Kept
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
 from seqmix.models.numbers import Context
-from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, leading, split
+from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, added_up, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
 _WORTH_THREADS = 2048  # rows; below, starting threads costs more than it saves
@@ -111,7 +111,7 @@ class Mixture(Kept):
         bits[rows.codes < 0] = 0.0
         self._check(bits, rows)
         if ask is not None:
-            ask.laws[:] = np.einsum("mi,imk->mk", before, np.stack([part.laws for part in asks if part is not None]))
+            ask.laws[:] = added_up(before, [part.laws for part in asks if part is not None])
         self.rows += len(rows)
         self.bits += float(np.nansum(bits))
         self.model_bits += np.nansum(np.where(asleep, bits[:, None], losses), axis=0)
@@ -148,13 +148,12 @@ class Mixture(Kept):
         """Law of the next row, at `time` (microseconds) where the log has times."""
         every = [model.predict(time) for model in self.models]
         weights = self.weights.of(np.array([law is not None for law in every]))
-        laws = [(weight, law) for weight, law in zip(weights.tolist(), every, strict=True) if law is not None]
-        masses = np.zeros(max(len(law.masses) for _, law in laws))
-        for weight, law in laws:
-            masses[: len(law.masses)] += weight * law.masses
-        unseen = sum(weight * law.unseen for weight, law in laws)
-        whole = float(masses.sum()) + unseen  # 1, but for models asleep and the last bit
-        return StatesLaw(masses / whole, unseen / whole)
+        whole = np.zeros((len(every), max(len(law.masses) for law in every if law is not None) + 1))
+        for line, law in zip(whole, every, strict=True):
+            if law is not None:
+                line[: len(law.masses)], line[-1] = law.masses, law.unseen
+        law = added_up(weights[None, :], list(whole[:, None]))[0]
+        return StatesLaw(law[:-1], float(law[-1]))
 
     def walk(self, steps: int, times: Sequence[int | None] | None = None, paths: int = 2000) -> Walk:
         """Law of each of the next steps: exact for the first, and while at most `paths` continuations are there.

@@ -67,11 +67,9 @@ class Weights(Kept):
 
     def of(self, awake: npt.NDArray[np.bool_]) -> Floats:
         """The same where only some models are awake: in every camp, these share its weight; the others have none."""
-        camps = np.exp2(-self.camps)
-        static = np.where(awake, np.exp2(-(self.behind - self.behind[awake].min())), 0.0)
-        shares = np.where(awake, self.shares, 0.0)
-        weights = camps[0] * static / static.sum() + camps[1:] @ (shares / shares.sum(axis=1, keepdims=True))
-        return weights / weights.sum()
+        rows = np.where(awake, 0.0, np.nan)[None, :]
+        before: Floats = self.mix(rows, np.zeros(1, dtype=np.int32), frozen=True)[1][0]
+        return before
 
     def ahead(self, steps: int) -> Floats:
         """Weights (steps, models) of the models that will be in force at each of the next rows.

@@ -2,12 +2,20 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
 from seqmix.compressors.protocol import Compressor
 from seqmix.models.bins import Bins
 from seqmix.models.compressed import Allowance, Compressed
 from seqmix.models.compressed import model_of as states_model_of
 from seqmix.models.history import Codes
+from seqmix.models.laws import Floats, NumberLaw
 from seqmix.models.numbers import Context
+from seqmix.models.protocol import Ask
+from seqmix.series.rows import Rows
 
 
 class CompressedBins(Bins):
@@ -20,6 +28,7 @@ class CompressedBins(Bins):
     def __init__(self, context: Context, allowance: Allowance | None = None) -> None:
         """allowance None: always awake."""
         self._allowance = allowance
+        self._slept: list[Rows] = []  # through, and not followed yet
         super().__init__(context)
 
     def _first(self) -> Compressed:
@@ -29,8 +38,51 @@ class CompressedBins(Bins):
         assert isinstance(self._states, Compressed)
         return self._states.again(codes)
 
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        assert rows.values is not None
+        slept = sum(map(len, self._slept)) + len(rows)
+        before_look = self.rows + slept < 1 << self.rows.bit_length()
+        if not frozen and before_look and (not self.awake or self._states.sleeps(slept)):
+            self._slept.append(rows)
+            return np.where(np.isnan(rows.values), 0.0, np.nan)
+        self._follow()
+        return super().absorb(rows, ask, frozen)
+
+    def _follow(self) -> None:
+        """Follow the rows slept through: all at once costs less than one by one."""
+        slept, self._slept = self._slept, []
+        if slept:
+            parts = [(rows.codes, rows.values, rows.cells) for rows in slept]
+            codes, values, cells = (np.concatenate(some) for some in zip(*parts, strict=True))
+            super().absorb(Rows(codes, None, slept[0].first, values, cells))
+
+    def predict(self, time: int | None = None) -> NumberLaw | None:
+        if self._slept and (not self.awake or self._states.sleeps(sum(map(len, self._slept)) + 1)):
+            return None
+        self._follow()
+        return super().predict(time)
+
+    def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
+        self._follow()
+        return super().walk(steps, paths, times)
+
+    def sample(
+        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
+    ) -> Floats:
+        self._follow()
+        return super().sample(steps, paths, rng, times)
+
     def rouse(self, left: int) -> None:
+        self._follow()
         self._states.rouse(left)
+
+    def state(self) -> dict[str, Any]:
+        self._follow()
+        return super().state()
+
+    def restore(self, state: dict[str, Any]) -> None:
+        self._slept = []
+        super().restore(state)
 
     def setting(self) -> str:
         return ""

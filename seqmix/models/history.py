@@ -19,6 +19,7 @@ Keys = npt.NDArray[np.uint64]
 BEFORE_START = -3  # stands in for rows before the first
 _STIR = np.uint64(0x9FB21C651E98DF25)
 _SHIFT = np.uint64(32)
+_FIVE = np.uint64(5)
 _EMPTY = np.uint64(0x243F6A8885A308D3)
 _LETTER_BASE = 0x2545F4914F6CDD1D
 _LETTER_BACK = pow(_LETTER_BASE, -1, 1 << 64)
@@ -26,8 +27,7 @@ _LETTER_BACK = pow(_LETTER_BASE, -1, 1 << 64)
 
 def stir(key: Keys, value: npt.NDArray[np.generic]) -> Keys:
     """The hash of context `key` made longer by one `value`, elementwise."""
-    with np.errstate(over="ignore"):
-        mixed = (key + value.astype(np.int64).view(np.uint64) + np.uint64(5)) * _STIR
+    mixed = (key + value.astype(np.int64).view(np.uint64) + _FIVE) * _STIR  # an array goes round without a warning
     mixed ^= mixed >> _SHIFT
     return mixed
 

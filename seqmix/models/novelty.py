@@ -36,6 +36,8 @@ class Novelty(Kept):
         n = len(codes)
         if self._fixed:
             return np.zeros(n), np.zeros(n)
+        if n == 1 and not frozen:
+            return self._absorb_one(int(codes[0]))
         there = codes >= 0
         if frozen:
             known = np.isin(codes, np.flatnonzero(self.times_seen))
@@ -58,6 +60,23 @@ class Novelty(Kept):
         self.rows += int(there.sum())
         self.singles += int(change.sum())
         return self._losses(new, there, chance)
+
+    def _absorb_one(self, code: int) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
+        """The same for one row, without the cost of arrays."""
+        chance = self.unseen()
+        if code < 0:
+            return np.zeros(1), np.array([chance])
+        if code >= len(self.times_seen):
+            more = np.zeros(code + 1 - len(self.times_seen), dtype=np.int8)
+            self.times_seen = np.concatenate([self.times_seen, more])
+        seen = int(self.times_seen[code])
+        if seen < 2:
+            self.times_seen[code] = seen + 1
+            self.singles += -1 if seen else 1
+        self.rows += 1
+        with np.errstate(divide="ignore"):
+            loss = -np.log2(np.array([1.0 - chance if seen else chance]))
+        return loss + 0.0, np.array([chance])
 
     @staticmethod
     def _losses(

@@ -177,7 +177,7 @@ class StatesModel(Kept, ABC):
         bits, weights = self._weights.mix(losses, asked.want, frozen)
         novel, unseen = self._novelty.absorb(codes, frozen)
         if ask is not None:
-            ask.laws[:] = np.einsum("mi,imk->mk", weights, np.stack(laws))
+            ask.laws[:] = added_up(weights, laws)
             ask.laws *= (1.0 - unseen[ask.at])[:, None]
             ask.laws[:, -1] = unseen[ask.at]
         # a missing row costs nothing, but NaN, asleep, stays
@@ -185,10 +185,10 @@ class StatesModel(Kept, ABC):
 
     def predict(self, time: int | None = None) -> StatesLaw:
         fork = self._history.fork(1, time)
-        law = np.zeros(self.seen + 1)
-        for weight, setting in zip(self._weights.now(), self.settings, strict=True):
-            law += weight * self._whole(setting, fork, setting.start(1))[0]
-        return StatesLaw(law[:-1], float(law[-1]))
+        laws = [setting.laws(fork, setting.start(1), self.seen) for setting in self.settings]
+        unseen = self._novelty.unseen()
+        law = added_up(self._weights.now()[None, :], laws)[0] * (1.0 - unseen)
+        return StatesLaw(law, unseen)
 
     def _whole(self, setting: Setting, fork: Fork, place: npt.NDArray[np.int64]) -> Floats:
         """Laws of one setting after each path with the unseen mass: (paths, states + 1)."""
@@ -263,6 +263,14 @@ class StatesModel(Kept, ABC):
 
     def rouse(self, left: int) -> None:
         """A forecast comes after `left` more rows: a model that sleeps may wake for it."""
+
+
+def added_up(weights: Floats, laws: Sequence[Floats]) -> Floats:
+    """Mixed laws (m, k), by weights (m, models) of laws (m, k) each; the sum of a row depends on that row only."""
+    out = weights[:, :1] * laws[0]
+    for i in range(1, len(laws)):
+        out += weights[:, i : i + 1] * laws[i]
+    return out
 
 
 def leading(weights: Floats) -> list[tuple[int, float]]:

@@ -333,7 +333,7 @@ def test_sleeping_model() -> None:
         weights[awake] *= said[awake] / mixed
         expected.append(-np.log2(mixed))
     np.testing.assert_allclose(bits, expected, rtol=1e-9)
-    np.testing.assert_allclose(one.weights.now(), weights, rtol=1e-9)
+    np.testing.assert_allclose(one.weights.now(), weights, rtol=1e-9, atol=1e-30)
     assert one.awake.tolist() == [400, 400, 100]
     there = np.arange(400) % 4 == 0
     own = -np.log2(np.where(codes[there], 0.95, 0.05)).sum()
