@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from seqmix.describing import Description, describe
     from seqmix.errors import SeqmixError
     from seqmix.forecasting import Forecast, forecast
+    from seqmix.learning import Lesson, learn
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
 _HOME = {
     "Description": "seqmix.describing",
     "Forecast": "seqmix.forecasting",
+    "Lesson": "seqmix.learning",
     "Log": "seqmix.series",
     "Mixture": "seqmix.mixture.mixture",
     "Score": "seqmix.scoring",
@@ -34,6 +36,7 @@ _HOME = {
     "Weights": "seqmix.weighing",
     "describe": "seqmix.describing",
     "forecast": "seqmix.forecasting",
+    "learn": "seqmix.learning",
     "open_log": "seqmix.series",
     "read": "seqmix.series",
     "score": "seqmix.scoring",
@@ -43,6 +46,7 @@ _HOME = {
 __all__ = [
     "Description",
     "Forecast",
+    "Lesson",
     "Log",
     "Mixture",
     "Score",
@@ -52,6 +56,7 @@ __all__ = [
     "__version__",
     "describe",
     "forecast",
+    "learn",
     "open_log",
     "read",
     "score",

@@ -13,7 +13,7 @@ from seqmix.errors import OptionError, visible
 from seqmix.inputs import Held, opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Ask, Model
-from seqmix.reading import mixture_for
+from seqmix.reading import begun, mixture_for
 from seqmix.series import Log, Rows, Series
 from seqmix.series.clock import TimeTextError
 
@@ -90,7 +90,7 @@ class _Laws:
 def score(
     log: Any,
     *,
-    last: int | str = "20%",
+    last: int | str | None = None,
     start: str | None = None,
     against: Any = None,
     frozen: bool = False,
@@ -99,19 +99,22 @@ def score(
     steps: int | None = None,
     period: int | Sequence[int] | None = None,
     resolution: float | None = None,
+    state: Any = None,
     **reading: Any,
 ) -> Score | NumberScore:
     """Score held-out rows: each is predicted before it is learned, and its loss in bits added up.
 
-    log, models, reading: as for `seqmix.forecast`. Scored are the last N rows or "N%" of them, or "all" rows from
-    a blank start; or with start=TIME those from that time on; or with `against` (a path, or a log opened with
-    the alphabet of this one) the rows of that log after all of this one. frozen: nothing is learned from scored
-    rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError or DataError.
+    log, models, state, reading: as for `seqmix.forecast`. Scored are the last N rows of the log or "N%" of them (20 %
+    unless said otherwise), or "all" rows, from a blank start or from a state (with one, all unless said otherwise);
+    or with start=TIME those from that time on; or with `against` (a path, or a log opened with the alphabet of this
+    one) the rows of that log after all of this one. frozen: nothing is learned from scored rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError, DataError or StateError.
 
     Numbers only: steps scores forecasts so many rows ahead too, from a moving origin; period, resolution: as for
     `seqmix.forecast`. A number or share of rows keeps the log in memory; the other choices do not.
     """
-    with opened(log, **reading) as source:
+    if last is None:
+        last = "20%" if state is None else "all"
+    with begun(log, state, models, period, resolution, **reading) as (source, mixture, _):
         run: _Run | NumberRun
         if source.kind == "numbers":
             from seqmix.number_scoring import NumberRun
@@ -119,9 +122,9 @@ def score(
             def make(rows: Rows | None) -> NumberMixture:
                 return mixture_for(source, rows, models, period, resolution)  # type: ignore[return-value]
 
-            run = NumberRun(make, frozen, on_row, steps, source.cadence)
+            run = NumberRun(make, frozen, on_row, steps, mixture)  # type: ignore[arg-type]
         else:
-            run = _Run(source.kind, frozen, models, on_row)
+            run = _Run(source.kind, frozen, models, on_row, mixture)
         if against is not None:
             for rows in source.chunks():
                 run.learn(rows)
@@ -192,9 +195,10 @@ class _Run:
         frozen: bool,
         models: Sequence[str] | Sequence[Model] | None,
         on_row: Callable[[Rows, np.ndarray], None] | None,
+        mixture: Mixture | None,
     ) -> None:
         self._kind, self._frozen, self._models, self._on_row = kind, frozen, models, on_row
-        self._mixture: Mixture | None = None
+        self._mixture = mixture
         self._baselines = baselines(kind)
         self._base_bits = dict.fromkeys(self._baselines, 0.0)
         self._laws = _Laws()

@@ -12,8 +12,9 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from seqmix.beside import failing
 from seqmix.cli.notes import Progress, say
-from seqmix.cli.writer import FORMATS, Writer, failing, writing
+from seqmix.cli.writer import FORMATS, Writer, writing
 
 if TYPE_CHECKING:
     from seqmix.series.log import Log
