@@ -42,7 +42,7 @@ def opened_after(facts: Facts, log: Any, **reading: Any) -> Iterator[Log]:
         with open_log(log, after=facts, **reading) as source:
             yield source
         return
-    facts.agree(Options(kind=reading.get("kind")))
+    facts.agree(Options(reading.get("column"), reading.get("time"), reading.get("kind")))
     if log is None:
         yield _log_of(facts, iter(()), facts.name)
     elif isinstance(log, Log):

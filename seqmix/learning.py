@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from os import PathLike, fspath
 from typing import Any
@@ -11,7 +12,7 @@ from typing import Any
 from seqmix.errors import DataError
 from seqmix.inputs import opened
 from seqmix.learned import Learned, facts_of, load
-from seqmix.series import Alphabet, Log
+from seqmix.series import Alphabet, Series
 from seqmix.state import lock
 
 
@@ -52,16 +53,36 @@ def learn(
     gives the same state as in one. The file changes when all is learned, or not at all.
     Raises OptionError, DataError, StateError or OutputError.
     """
-    with lock(fspath(into)):
-        if os.path.lexists(into):
-            known = load(into)
-            known.agree(models, period, resolution)
-            return _learn(known, log, into, **reading)
-        with opened(log, **reading) as source:
-            facts = facts_of(source, fspath(into))
-            if not isinstance(source, Log) and source.kind == "states":
-                facts.alphabet = Alphabet()  # a series may know states that none of its rows has
-            return _learn(Learned(facts, models, period, resolution), source, into)
+    with held(into) as known:
+        return learn_held(known, log, into, models=models, period=period, resolution=resolution, **reading)
+
+
+@contextmanager
+def held(path: str | PathLike[str]) -> Iterator[Learned | None]:
+    """What a state file holds, None if it is not there; no other writer gets at it meanwhile. Raises StateError."""
+    with lock(fspath(path)):
+        yield load(path) if os.path.lexists(path) else None
+
+
+def learn_held(
+    known: Learned | None,
+    log: Any,
+    into: str | PathLike[str],
+    *,
+    models: Sequence[str] | None = None,
+    period: int | Sequence[int] | None = None,
+    resolution: float | None = None,
+    **reading: Any,
+) -> Lesson:
+    """As `learn`, for a state file that is `held`."""
+    if known is not None:
+        known.agree(models, period, resolution)
+        return _learn(known, log, into, **reading)
+    with opened(log, **reading) as source:
+        facts = facts_of(source, fspath(into))
+        if isinstance(source, Series) and source.kind == "states":
+            facts.alphabet = Alphabet()  # a series may know states that none of its rows has
+        return _learn(Learned(facts, models, period, resolution), source, into)
 
 
 def _learn(known: Learned, log: Any, into: str | PathLike[str], **reading: Any) -> Lesson:

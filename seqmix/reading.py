@@ -11,10 +11,11 @@ from seqmix.inputs import opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
 from seqmix.series import Log, Rows, Series
+from seqmix.series.facts import Facts
 
 
 def mixture_for(
-    source: Log | Series,
+    source: Facts,
     rows: Rows | None,
     models: Sequence[str] | Sequence[Model] | None,
     period: int | Sequence[int] | None = None,

@@ -107,7 +107,8 @@ def score(
     log, models, state, reading: as for `seqmix.forecast`. Scored are the last N rows of the log or "N%" of them (20 %
     unless said otherwise), or "all" rows, from a blank start or from a state (with one, all unless said otherwise);
     or with start=TIME those from that time on; or with `against` (a path, or a log opened with the alphabet of this
-    one) the rows of that log after all of this one. frozen: nothing is learned from scored rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError, DataError or StateError.
+    one) the rows of that log after all of this one. frozen: nothing is learned from scored rows. on_row: called with
+    each scored chunk and its losses (n,). Raises OptionError, DataError or StateError.
 
     Numbers only: steps scores forecasts so many rows ahead too, from a moving origin; period, resolution: as for
     `seqmix.forecast`. A number or share of rows keeps the log in memory; the other choices do not.

@@ -17,6 +17,7 @@ from seqmix.cli.notes import Progress, say
 from seqmix.cli.writer import FORMATS, Writer, writing
 
 if TYPE_CHECKING:
+    from seqmix.learned import Learned
     from seqmix.series.log import Log
 
 Function = Callable[..., Any]
@@ -79,10 +80,18 @@ class Source:
     quiet: bool
 
     @contextmanager
-    def open(self, notes: bool = True) -> Iterator[Log]:
-        """The log, with progress while it is read; what was assumed is told (`notes`) when all went well."""
-        with self._opened(self.path, notes, kind=self.kind) as log:
-            yield log
+    def open(self, notes: bool = True, known: Learned | None = None, needed: bool = True) -> Iterator[Log]:
+        """The log, with progress while it is read; what was assumed is told (`notes`) when all went well.
+
+        known: what is known of the rows before it; then, unless it is `needed`, no name is no log, not stdin.
+        """
+        if known is not None and self.path is None and not needed:
+            with known.go_on(None, kind=self.kind, column=self.column, time=self.time) as log:
+                yield log
+        else:
+            after = None if known is None else known.facts
+            with self._opened(self.path, notes, kind=self.kind, after=after) as log:
+                yield log
 
     @contextmanager
     def open_another(self, path: str, first: Log) -> Iterator[Log]:
@@ -176,6 +185,24 @@ def takes_models(command: Function) -> Function:
         run, command,
         option("--models", metavar="NAME,NAME",
                help="Models to mix, see seqmix models.  [default: all for the kind of log]"),
+    )  # fmt: skip
+
+
+def goes_on(command: Function) -> Function:
+    """Adds --state; the command gets what the file holds as `known`, or None."""
+
+    def run(state: str | None, **others: Any) -> None:
+        known = None
+        if state is not None:
+            from seqmix.learned import load
+
+            known = load(state)
+        command(known=known, **others)
+
+    return _with(
+        run, command,
+        option("--state", metavar="STATE", type=click.Path(),
+               help="Go on from what 'seqmix learn' kept in STATE; the file stays as it is."),
     )  # fmt: skip
 
 

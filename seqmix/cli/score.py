@@ -3,18 +3,22 @@
 from __future__ import annotations
 
 from contextlib import ExitStack
+from typing import TYPE_CHECKING
 
 import click
 
 from seqmix.cli.number_options import for_numbers, reads_numbers
-from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes_models, writes_answer
+from seqmix.cli.options import Answer, Helpful, Source, goes_on, option, reads_log, takes_models, writes_answer
+
+if TYPE_CHECKING:
+    from seqmix.learned import Learned
 
 
 @click.command("score", cls=Helpful, example="seqmix score line.csv --column state --last 20%")
 @option(
     "--last",
     metavar="N|N%|all",
-    help="Score the last rows; all: every row, from a blank start.  [default: 20%]",
+    help="Score the last rows; all: every row, from a blank start.  [default: 20%; with --state all]",
 )
 @option("--from", "start", metavar="TIME", help="Score the rows from TIME on, in ISO 8601.")
 @option("--against", metavar="FILE", type=click.Path(), help="Score the rows of FILE, after all of LOG.")
@@ -24,12 +28,13 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
         help="Numbers: score forecasts of 1 to N steps ahead, too.")  # fmt: skip
 @reads_numbers
 @takes_models
+@goes_on
 @reads_log
 @writes_answer
 def command(
     source: Source, answer: Answer, models: list[str] | None, last: str | None, start: str | None,
     against: str | None, frozen: bool, per_row: bool, steps: int | None,
-    period: tuple[int, ...], resolution: float | None,
+    period: tuple[int, ...], resolution: float | None, known: Learned | None,
 ) -> None:  # fmt: skip
     """Measure what the probabilities were worth on held-out rows.
 
@@ -47,17 +52,18 @@ def command(
 
     with ExitStack() as stack:
         writer = stack.enter_context(answer.open())
-        log = stack.enter_context(source.open())
+        log = stack.enter_context(source.open(known=known))
         numbers = for_numbers(log, steps=steps, period=period, resolution=resolution)
         other = stack.enter_context(source.open_another(against, log)) if against else None
         table: list[score_rows.Cells] = []
         score = seqmix.score(
             log,
-            last=int(last) if last and last.isdecimal() else last or "20%",
+            last=int(last) if last and last.isdecimal() else last,
             start=start,
             against=other,
             frozen=frozen,
             models=models,
+            state=known,
             on_row=score_rows.row_writer(writer, other or log, table) if per_row else None,
             **numbers,
         )
