@@ -20,6 +20,7 @@ from seqmix.models.protocol import Model
 from seqmix.reading import mixture_for
 from seqmix.series import CHUNK, Alphabet, Clock, Log, Rows
 from seqmix.series.facts import Facts
+from seqmix.series.kinds import KINDS
 from seqmix.series.gaps import GapFiller, find_cadence
 from seqmix.series.rows import Piece, cut, join
 
@@ -187,6 +188,8 @@ def load(path: str | PathLike[str]) -> Learned:
 def _restored(path: str, header: dict[str, Any], arrays: state.Arrays) -> Learned:
     log = {name: header["log"][name] for name in _LOG}
     log |= {"name": path, "clock": Clock(**log["clock"]), "places": tuple(log["places"])}
+    if log["kind"] not in KINDS:
+        raise ValueError(f"logs of {log['kind']}")
     learned = Learned(Facts(**log, alphabet=_alphabet(log["kind"], arrays)), **header["asked"])
     learned.timed, learned.settled = header["timed"], header["settled"]
     if learned.settled:
@@ -196,18 +199,28 @@ def _restored(path: str, header: dict[str, Any], arrays: state.Arrays) -> Learne
         start = "mixture."
         learned.mixture.restore({name[len(start) :]: v for name, v in kept.items() if name.startswith(start)})
     elif "held" in arrays:
-        learned.held = (arrays["held"], arrays.get("times"))
+        held, times = arrays["held"], arrays.get("times")
+        forms = [(held, np.float64 if log["kind"] == "numbers" else np.int32)]
+        forms += [] if times is None else [(times, np.int64)]
+        if any(array.dtype != form or array.shape != (len(held),) for array, form in forms):
+            raise ValueError("rows that are none")
+        learned.held = (held, times)
         learned._build(learned.held)
+    if log["kind"] != "numbers" and learned.mixture.seen > len(learned.facts.alphabet):
+        raise ValueError("states without a label")
     if learned.mixture.rows != header["rows"]:
         raise ValueError(f"{learned.mixture.rows} rows, not {header['rows']}")
     return learned
 
 
 def _alphabet(kind: str, arrays: state.Arrays) -> Alphabet:
+    """Raises ValueError for labels that do not lie end to end, or are there twice."""
     text, labels, start = arrays["labels"].tobytes(), [], 0
     for end in arrays["ends"].tolist():
         labels.append(text[start:end].decode())
         start = end
+    if b"".join(label.encode() for label in labels) != text or len(set(labels)) < len(labels):
+        raise ValueError("labels that are none")
     return Alphabet(labels, fixed=kind == "bytes")
 
 

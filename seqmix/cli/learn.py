@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -13,7 +14,7 @@ from seqmix.cli.writer import Writer, bits, percent
 if TYPE_CHECKING:
     from seqmix.learning import Lesson
 
-FIELDS = {
+FIELDS: dict[str, tuple[str, Callable[[Any], str]]] = {
     "learned": ("rows learned now", str), "rows": ("rows in all", str), "bits": ("bits", bits),
     "bits_per_row": ("bits a row", bits), "leading": ("leading model", str), "weight": ("its weight", percent),
 }  # fmt: skip

@@ -45,7 +45,7 @@ class Table(Kept):
 
     def state(self) -> dict[str, Any]:
         """The mask as far as it is used: how far the digits reach depends on what else the process has read."""
-        return super().state() | {"mask": np.trim_zeros(self.mask, "b")}
+        return super().state() | {"mask": np.trim_zeros(self.mask, "b").copy()}
 
     def restore(self, state: dict[str, Any]) -> None:
         super().restore(state)
