@@ -20,8 +20,8 @@ from seqmix.models.protocol import Model
 from seqmix.reading import mixture_for
 from seqmix.series import CHUNK, Alphabet, Clock, Log, Rows
 from seqmix.series.facts import Facts
-from seqmix.series.kinds import KINDS
 from seqmix.series.gaps import GapFiller, find_cadence
+from seqmix.series.kinds import KINDS
 from seqmix.series.rows import Piece, cut, join
 
 _LOG = ("kind", "format", "column", "time_column", "places", "separator", "header", "clock", "cadence")
@@ -60,12 +60,12 @@ class Learned:
     def mixture(self) -> Mixture:
         """Blank before the first row."""
         if self._mixture is None:
-            self._mixture = self._blank()
+            self._mixture = self._blank(self.asked["models"])
         return self._mixture
 
-    def _blank(self) -> Mixture:
+    def _blank(self, models: list[str] | None) -> Mixture:
         nothing = Rows(np.zeros(0, np.int32), np.zeros(0, np.int64) if self.timed else None, 0)
-        return mixture_for(self.facts, nothing, **self.asked)
+        return mixture_for(self.facts, nothing, models, self.asked["period"], self.asked["resolution"])
 
     def agree(self, models: Models, period: Periods, resolution: float | None) -> None:
         """Raises OptionError where something else is asked for than what was learned with."""
@@ -134,7 +134,7 @@ class Learned:
         self.facts.cadence = self._cadence()
         self.filler = GapFiller()
         self.filler.settle(self.facts.cadence)
-        self._mixture = self._blank()
+        self._mixture = self._blank(self.asked["models"])
         for rows in cut(self.filler.fill([] if before is None else [before])):
             self._mixture.absorb(rows)
 
@@ -170,6 +170,7 @@ class Learned:
             "settled": self.settled,
             "last": self.filler.last,
             "asked": self.asked,
+            "models": self.mixture.names,
             "scalars": scalars,
         }
         state.write(path, header, arrays)
@@ -188,13 +189,14 @@ def load(path: str | PathLike[str]) -> Learned:
 def _restored(path: str, header: dict[str, Any], arrays: state.Arrays) -> Learned:
     log = {name: header["log"][name] for name in _LOG}
     log |= {"name": path, "clock": Clock(**log["clock"]), "places": tuple(log["places"])}
-    if log["kind"] not in KINDS:
-        raise ValueError(f"logs of {log['kind']}")
+    if log["kind"] not in KINDS or not all(isinstance(time, int | None) for time in (log["cadence"], header["last"])):
+        raise ValueError(f"a log of {log['kind']}, cadence {log['cadence']}, last time {header['last']}")
     learned = Learned(Facts(**log, alphabet=_alphabet(log["kind"], arrays)), **header["asked"])
     learned.timed, learned.settled = header["timed"], header["settled"]
     if learned.settled:
         learned.filler.settle(learned.facts.cadence)
         learned.filler.last = header["last"]
+        learned._mixture = learned._blank(header["models"])  # a later library may have more
         kept = {**header["scalars"], **{name: a if a.shape else a.item() for name, a in arrays.items()}}
         start = "mixture."
         learned.mixture.restore({name[len(start) :]: v for name, v in kept.items() if name.startswith(start)})

@@ -24,6 +24,7 @@ The header has exactly these keys:
     settled     whether the first 4,096 rows are there, which decide the cadence
     last        time of the last row in microseconds, or null
     asked       models, period, resolution: as they were asked for, or null
+    models      names of the models of the mixture
     scalars     name: integer, text, boolean or null, of the mixture
     arrays      list of [name, dtype, shape]; dtype is one of b1 i1 u1 u2 i4 i8 u8 f4 f8; a shape of [] is a float
 
@@ -57,7 +58,7 @@ MAGIC = b"\x89seqmix\n"
 VERSION = 1
 HEADER_CAP = 16 << 20
 BODY_CAP = 64 << 30
-KEYS = ("seqmix", "rows", "log", "timed", "settled", "last", "asked", "scalars", "arrays")
+KEYS = ("seqmix", "rows", "log", "timed", "settled", "last", "asked", "models", "scalars", "arrays")
 
 _CHECKSUM = 32
 _FIXED = len(MAGIC) + 8

@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 @option(
     "--last",
     metavar="N|N%|all",
-    help="Score the last rows; all: every row, from a blank start.  [default: 20%; with --state all]",
+    help="Score the last rows; all: every row, from a blank start.  [default: 20%]",
 )
 @option("--from", "start", metavar="TIME", help="Score the rows from TIME on, in ISO 8601.")
 @option("--against", metavar="FILE", type=click.Path(), help="Score the rows of FILE, after all of LOG.")
@@ -41,6 +41,8 @@ def command(
     Each row is predicted before it is learned; its loss is minus log2 of the probability it was given, in
     bits. The loss of the mixture stands beside that of every model and of simple baselines, and its regret
     beside the bound. In a log of numbers the errors, of the median, and the CRPS are in the unit of the log.
+    With --state LOG holds the rows after those of the state; all of them are scored unless said otherwise, and
+    the baselines know LOG only.
     """
     context = click.get_current_context()
     if sum(choice is not None for choice in (last, start, against)) > 1:

@@ -39,7 +39,7 @@ def test_help_lists_every_command(run):
 
 def test_defaults_are_shown(run):
     assert "[default: 5; x>=1]" in run("forecast", "-h").out
-    assert "[default: 20%; with --state all]" in run("score", "-h").out
+    assert "[default: 20%]" in run("score", "-h").out
 
 
 def test_reference_page_is_what_help_says():
