@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from seqmix.describing import Description, describe
     from seqmix.errors import SeqmixError
     from seqmix.forecasting import Forecast, forecast
+    from seqmix.learning import Lesson, learn
     from seqmix.likeness import Likeness, alike
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
@@ -28,6 +29,7 @@ _HOME = {
     "Description": "seqmix.describing",
     "Forecast": "seqmix.forecasting",
     "Likeness": "seqmix.likeness",
+    "Lesson": "seqmix.learning",
     "Log": "seqmix.series",
     "Mixture": "seqmix.mixture.mixture",
     "Score": "seqmix.scoring",
@@ -37,6 +39,7 @@ _HOME = {
     "alike": "seqmix.likeness",
     "describe": "seqmix.describing",
     "forecast": "seqmix.forecasting",
+    "learn": "seqmix.learning",
     "open_log": "seqmix.series",
     "read": "seqmix.series",
     "score": "seqmix.scoring",
@@ -46,6 +49,7 @@ _HOME = {
 __all__ = [
     "Description",
     "Forecast",
+    "Lesson",
     "Likeness",
     "Log",
     "Mixture",
@@ -57,6 +61,7 @@ __all__ = [
     "alike",
     "describe",
     "forecast",
+    "learn",
     "open_log",
     "read",
     "score",

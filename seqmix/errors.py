@@ -29,6 +29,10 @@ class DataError(SeqmixError):
         self.column = column
 
 
+class StateError(SeqmixError):
+    """A state file that cannot be used: not there, damaged, newer, of another kind, or being written by another."""
+
+
 class OptionError(SeqmixError):
     """A request that makes no sense: an unknown model, zero steps, a column that is not there."""
 

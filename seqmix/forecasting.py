@@ -9,10 +9,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from seqmix.errors import OptionError
-from seqmix.inputs import opened
 from seqmix.models.protocol import Model
-from seqmix.models.registry import SHARE
-from seqmix.reading import mixture_for, with_last
+from seqmix.reading import begun, mixture_for, with_last
 from seqmix.series import Log, Series
 
 if TYPE_CHECKING:
@@ -80,23 +78,23 @@ def forecast(
     quantiles: Sequence[float] = (0.05, 0.1, 0.25, 0.5, 0.75, 0.9, 0.95),
     above: float | Sequence[float] | None = None,
     below: float | Sequence[float] | None = None,
-    compressor_share: float = SHARE,
+    compressor_share: float | None = None,
+    state: Any = None,
     **reading: Any,
 ) -> Forecast | NumberForecast:
     """The law of each of the next `steps` rows of a log: a Forecast of states or bytes, a NumberForecast of numbers.
 
     log: a path, an open file, a Log, a Series, or values (strings, bytes, numbers); reading: column, time, kind,
     header, as for `seqmix.read`. models: names or objects, None for all that fit. paths: return so many joint
-    continuations too, drawn with `seed`. compressor_share: of the run time, for the models made of compressors; 0
-    leaves them out. Raises OptionError or DataError.
+    continuations too, drawn with `seed`. compressor_share: of the run time, for the models made of compressors, 0.1
+    unless said otherwise; 0 leaves them out. state: path of a state file that the log goes on from; the log may then be
+    None, and the file stays as it is. Raises OptionError, DataError or StateError.
     Numbers only: period, rows per repeat, one or several, instead of what the clock tells; resolution of the grid;
     quantiles, levels in (0, 1); above, below: thresholds.
     """
     if steps < 1 or (paths is not None and paths < 1):
         raise OptionError("a forecast takes at least one step, and one path")
-    with opened(log, **reading) as source:
-        mixture = None
-        last: int | None = None
+    with begun(log, state, models, period, resolution, compressor_share, **reading) as (source, mixture, last):
         for rows, left in with_last(source.chunks()):
             if mixture is None:
                 mixture = mixture_for(source, rows, models, period, resolution, compressor_share)

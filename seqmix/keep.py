@@ -30,10 +30,22 @@ class Kept:
         return out
 
     def restore(self, state: dict[str, Any]) -> None:
-        """Take over what `state()` gave; a name that is missing is a KeyError."""
+        """Take over what `state()` gave.
+
+        Raises KeyError for a name that is missing, ValueError for a value that cannot be the one of that name.
+        """
         for name in self.kept:
-            value = state[name]
+            value, own = state[name], getattr(self, name)
+            if None not in (_form(value), _form(own)) and _form(value) != _form(own):
+                raise ValueError(f"{name} is {_form(value)}, not {_form(own)}")
             setattr(self, name, value.copy() if isinstance(value, np.ndarray) else value)
         for prefix, part in self.parts().items():
             start = prefix + "."
             part.restore({name[len(start) :]: v for name, v in state.items() if name.startswith(start)})
+
+
+def _form(value: Any) -> str | None:
+    """What stays the same of a value while it is learned; None where it may still become something."""
+    if value is None:
+        return None
+    return f"{value.dtype} in {value.ndim} dimensions" if isinstance(value, np.ndarray) else "a single value"

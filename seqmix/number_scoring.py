@@ -108,10 +108,10 @@ class NumberRun:
         frozen: bool,
         on_row: Callable[[Rows, Floats], None] | None,
         steps: int | None,
-        cadence: int | None,
+        mixture: NumberMixture | None,
     ) -> None:
-        self._make, self._frozen, self._on_row, self._steps, self._cadence = make, frozen, on_row, steps, cadence
-        self._mixture: NumberMixture | None = None
+        self._make, self._frozen, self._on_row, self._steps = make, frozen, on_row, steps
+        self._mixture = mixture
         self._baselines: list[NumberBaseline] = []
         self._base_bits: list[float] = []
         self._measures = _Measures()
@@ -125,6 +125,7 @@ class NumberRun:
     def _ready(self, rows: Rows | None) -> NumberMixture:
         if self._mixture is None:
             self._mixture = self._make(rows)
+        if not self._baselines:
             self._baselines = number_baselines(self._mixture.context.periods)
             self._base_bits = [0.0] * len(self._baselines)
         return self._mixture
@@ -179,7 +180,8 @@ class NumberRun:
 
     def _look_ahead(self, mixture: NumberMixture, time: int | None, stands_for: int) -> None:
         steps = len(self._ahead)
-        times = None if time is None else [time + step * (self._cadence or 0) for step in range(steps)]
+        cadence = mixture.context.cadence or 0
+        times = None if time is None else [time + step * cadence for step in range(steps)]
         for step, law in enumerate(mixture.walk(steps, times)):
             self._waiting.append((self._scored + step, step, law, stands_for))
 

@@ -14,7 +14,7 @@ from seqmix.inputs import Held, opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Ask, Model
 from seqmix.models.registry import SHARE
-from seqmix.reading import mixture_for
+from seqmix.reading import begun, mixture_for
 from seqmix.series import Log, Rows, Series
 from seqmix.series.clock import TimeTextError
 
@@ -91,7 +91,7 @@ class _Laws:
 def score(
     log: Any,
     *,
-    last: int | str = "20%",
+    last: int | str | None = None,
     start: str | None = None,
     against: Any = None,
     frozen: bool = False,
@@ -100,22 +100,26 @@ def score(
     steps: int | None = None,
     period: int | Sequence[int] | None = None,
     resolution: float | None = None,
-    compressor_share: float = SHARE,
+    compressor_share: float | None = None,
+    state: Any = None,
     **reading: Any,
 ) -> Score | NumberScore:
     """Score held-out rows: each is predicted before it is learned, and its loss in bits added up.
 
-    log, models, reading: as for `seqmix.forecast`. Scored are the last N rows or "N%" of them, or "all" rows from
-    a blank start; or with start=TIME those from that time on; or with `against` (a path, or a log opened with
-    the alphabet of this one) the rows of that log after all of this one. frozen: nothing is learned from scored
-    rows. on_row: called with each scored chunk and its losses (n,). Raises OptionError or DataError.
+    log, models, state, reading: as for `seqmix.forecast`. Scored are the last N rows of the log or "N%" of them (20 %
+    unless said otherwise), or "all" rows, from a blank start or from a state (with one, all unless said otherwise);
+    or with start=TIME those from that time on; or with `against` (a path, or a log opened with the alphabet of this
+    one) the rows of that log after all of this one. frozen: nothing is learned from scored rows. on_row: called with
+    each scored chunk and its losses (n,). Raises OptionError, DataError or StateError.
 
     compressor_share: as for `seqmix.forecast`.
 
     Numbers only: steps scores forecasts so many rows ahead too, from a moving origin; period, resolution: as for
     `seqmix.forecast`. A number or share of rows keeps the log in memory; the other choices do not.
     """
-    with opened(log, **reading) as source:
+    if last is None:
+        last = "20%" if state is None else "all"
+    with begun(log, state, models, period, resolution, compressor_share, **reading) as (source, mixture, _):
         run: _Run | NumberRun
         if source.kind == "numbers":
             from seqmix.number_scoring import NumberRun
@@ -123,9 +127,9 @@ def score(
             def make(rows: Rows | None) -> NumberMixture:
                 return mixture_for(source, rows, models, period, resolution, compressor_share)  # type: ignore[return-value]
 
-            run = NumberRun(make, frozen, on_row, steps, source.cadence)
+            run = NumberRun(make, frozen, on_row, steps, mixture)  # type: ignore[arg-type]
         else:
-            run = _Run(source.kind, frozen, models, compressor_share, on_row)
+            run = _Run(source.kind, frozen, models, compressor_share, on_row, mixture)
         if against is not None:
             for rows in source.chunks():
                 run.learn(rows)
@@ -195,11 +199,12 @@ class _Run:
         kind: str,
         frozen: bool,
         models: Sequence[str] | Sequence[Model] | None,
-        share: float,
+        share: float | None,
         on_row: Callable[[Rows, np.ndarray], None] | None,
+        mixture: Mixture | None,
     ) -> None:
         self._kind, self._frozen, self._models, self._share, self._on_row = kind, frozen, models, share, on_row
-        self._mixture: Mixture | None = None
+        self._mixture = mixture
         self._baselines = baselines(kind)
         self._base_bits = dict.fromkeys(self._baselines, 0.0)
         self._laws = _Laws()
@@ -209,7 +214,8 @@ class _Run:
 
     def _ready(self, timed: bool) -> Mixture:
         if self._mixture is None:
-            self._mixture = Mixture(self._models, kind=self._kind, timed=timed, share=self._share)
+            share = SHARE if self._share is None else self._share
+            self._mixture = Mixture(self._models, kind=self._kind, timed=timed, share=share)
         return self._mixture
 
     def learn(self, rows: Rows) -> None:

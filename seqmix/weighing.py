@@ -9,11 +9,9 @@ from typing import Any
 import numpy as np
 
 from seqmix.errors import OptionError
-from seqmix.inputs import opened
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
-from seqmix.models.registry import SHARE
-from seqmix.reading import mixture_for, with_last
+from seqmix.reading import begun, mixture_for, with_last
 
 _POINTS = 20  # of the history, where the caller does not say how often
 
@@ -37,22 +35,21 @@ def weights(
     models: Sequence[str] | Sequence[Model] | None = None,
     period: int | Sequence[int] | None = None,
     resolution: float | None = None,
-    compressor_share: float = SHARE,
+    compressor_share: float | None = None,
+    state: Any = None,
     **reading: Any,
 ) -> Weights:
     """The weights of all models along a log, every so many rows (None: about twenty times).
 
-    log, models, period, resolution, compressor_share, reading: as for `seqmix.forecast`. Raises OptionError or
-    DataError.
+    log, models, period, resolution, compressor_share, state, reading: as for `seqmix.forecast`. Raises OptionError,
+    DataError or StateError.
     """
     if every is not None and every < 1:
         raise OptionError("weights can be noted every row at the most")
     history: list[tuple[int, str | None, dict[str, float]]] = []
     step = every or 1
-    mixture: Mixture | None = None
-    last: str | None = None
-    values = 0
-    with opened(log, **reading) as source:
+    with begun(log, state, models, period, resolution, compressor_share, **reading) as (source, mixture, before):
+        last = None if before is None else source.clock.text(before)
 
         def note(mixture: Mixture) -> None:
             now = dict(zip(mixture.names, mixture.weights.now().tolist(), strict=True))
@@ -75,7 +72,6 @@ def weights(
                     # too many: keep every second one, and go on in steps twice as long
                     history = history[1::2]
                     step *= 2
-            values += int((rows.codes >= 0).sum())
         if mixture is None:
             mixture = mixture_for(source, None, models, period, resolution, compressor_share)
         if not history or history[-1][0] != mixture.rows:
@@ -89,7 +85,7 @@ def weights(
                 "name": mixture.names[i],
                 "weight": float(mixture.weights.now()[i]),
                 "bits": float(mixture.model_bits[i]),
-                "bits_per_row": float(mixture.model_bits[i]) / max(values, 1),
+                "bits_per_row": float(mixture.model_bits[i]) / max(mixture.present, 1),
                 "prior_cost_bits": float(mixture.weights.costs[i]),
                 "rows_awake": int(mixture.awake[i]),
                 "setting": settings[mixture.names[i]],

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 
 from seqmix.cli.number_options import Levels, for_numbers, reads_numbers, threshold
-from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes_models, writes_answer
+from seqmix.cli.options import Answer, Helpful, Source, goes_on, option, reads_log, takes_models, writes_answer
+
+if TYPE_CHECKING:
+    from seqmix.learned import Learned
 
 
 @click.command("forecast", cls=Helpful, example="seqmix forecast line.csv --column state --steps 5")
@@ -21,12 +24,13 @@ from seqmix.cli.options import Answer, Helpful, Source, option, reads_log, takes
 @threshold("--below", help="Numbers: add the probability of less than X; may be repeated.")
 @reads_numbers
 @takes_models
+@goes_on
 @reads_log
 @writes_answer
 def command(
     source: Source, answer: Answer, library: dict[str, Any], steps: int, paths: int | None, seed: int,
     quantiles: tuple[float, ...] | None, above: tuple[float, ...], below: tuple[float, ...],
-    period: tuple[int, ...], resolution: float | None,
+    period: tuple[int, ...], resolution: float | None, known: Learned | None,
 ) -> None:  # fmt: skip
     """Say what comes next after the last row of LOG.
 
@@ -35,15 +39,17 @@ def command(
     how much of the answer comes from each model. The same log gives the same answer.
 
     A threshold X gets the probability that a step passes it, and that at least one step does.
+
+    With --state LOG holds the rows after those of the state, or is left out.
     """
     if paths and (quantiles or above or below):
         raise click.UsageError("--paths excludes --quantiles, --above and --below", click.get_current_context())
     import seqmix
     from seqmix.cli import forecast_numbers, forecast_states
 
-    with answer.open() as writer, source.open() as log:
+    with answer.open() as writer, source.open(known=known, needed=False) as log:
         numbers = for_numbers(log, quantiles=quantiles, above=above, below=below, period=period, resolution=resolution)
-        forecast = seqmix.forecast(log, steps=steps, seed=seed, paths=paths, **library, **numbers)
+        forecast = seqmix.forecast(log, steps=steps, seed=seed, paths=paths, state=known, **library, **numbers)
         if isinstance(forecast, seqmix.Forecast):
             forecast_states.write(writer, forecast)
         else:

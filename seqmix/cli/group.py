@@ -13,7 +13,7 @@ import seqmix
 from seqmix.cli.notes import say
 from seqmix.cli.options import Helpful
 
-NAMES = ("forecast", "score", "weights", "alike", "describe", "models", "completion")
+NAMES = ("forecast", "score", "weights", "learn", "alike", "describe", "models", "completion")
 COMPLETE = "_SEQMIX_COMPLETE"  # how the completion script of a shell asks for words
 
 
@@ -60,7 +60,7 @@ def _version(ctx: click.Context, param: click.Parameter, wanted: bool) -> None:
     epilog="Every option can be set in the environment, as SEQMIX_<COMMAND>_<OPTION>; --as, --models, --seed "
     "and --format as SEQMIX_<OPTION>, too. The command line wins. An option that may be repeated takes several "
     "values there, with blanks between them. "
-    "Exit codes: 0 done; 1 the log cannot be read; 2 usage; 74 the answer cannot be written.",
+    "Exit codes: 0 done; 1 the log or the state cannot be read; 2 usage; 74 the answer cannot be written.",
 )
 @click.option(
     "--version", is_flag=True, is_eager=True, expose_value=False, callback=_version,

@@ -12,10 +12,12 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from seqmix.beside import failing
 from seqmix.cli.notes import Progress, say
-from seqmix.cli.writer import FORMATS, Writer, failing, writing
+from seqmix.cli.writer import FORMATS, Writer, writing
 
 if TYPE_CHECKING:
+    from seqmix.learned import Learned
     from seqmix.series.log import Log
 
 Function = Callable[..., Any]
@@ -83,10 +85,18 @@ class Source:
         return not self.quiet and sys.stderr is not None and sys.stderr.isatty()
 
     @contextmanager
-    def open(self, notes: bool = True) -> Iterator[Log]:
-        """The log, with progress while it is read; what was assumed is told (`notes`) when all went well."""
-        with self._opened(self.path, notes, kind=self.kind) as log:
-            yield log
+    def open(self, notes: bool = True, known: Learned | None = None, needed: bool = True) -> Iterator[Log]:
+        """The log, with progress while it is read; what was assumed is told (`notes`) when all went well.
+
+        known: what is known of the rows before it; then, unless it is `needed`, no name is no log, not stdin.
+        """
+        if known is not None and self.path is None and not needed:
+            with known.go_on(None, kind=self.kind, column=self.column, time=self.time) as log:
+                yield log
+        else:
+            after = None if known is None else known.facts
+            with self._opened(self.path, notes, kind=self.kind, after=after) as log:
+                yield log
 
     @contextmanager
     def open_another(self, path: str, first: Log) -> Iterator[Log]:
@@ -181,7 +191,7 @@ def writes_answer(command: Function) -> Function:
 def takes_models(command: Function) -> Function:
     """Adds --models and --compressor-share; the command gets both as `library`, for the library's functions."""
 
-    def run(models: str | None, compressor_share: float, **others: Any) -> None:
+    def run(models: str | None, compressor_share: float | None, **others: Any) -> None:
         names = [name.strip() for name in models.split(",")] if models else None
         command(library={"models": names, "compressor_share": compressor_share}, **others)
 
@@ -190,8 +200,26 @@ def takes_models(command: Function) -> Function:
         option("--models", metavar="NAME,NAME",
                help="Models to mix, see seqmix models; default names all of the library.  "
                     "[default: all for the kind of log]"),
-        option("--compressor-share", type=click.FloatRange(0.0, 1.0), metavar="SHARE", default=0.1,
-               help="Part of the run time for models made of compressors; 0 leaves them out."),
+        option("--compressor-share", type=click.FloatRange(0.0, 1.0), metavar="SHARE",
+               help="Part of the run time for models made of compressors; 0 leaves them out.  [default: 0.1]"),
+    )  # fmt: skip
+
+
+def goes_on(command: Function) -> Function:
+    """Adds --state; the command gets what the file holds as `known`, or None."""
+
+    def run(state: str | None, **others: Any) -> None:
+        known = None
+        if state is not None:
+            from seqmix.learned import load
+
+            known = load(state)
+        command(known=known, **others)
+
+    return _with(
+        run, command,
+        option("--state", metavar="STATE", type=click.Path(),
+               help="Go on from what 'seqmix learn' kept in STATE; the file stays as it is."),
     )  # fmt: skip
 
 

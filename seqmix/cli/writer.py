@@ -17,8 +17,9 @@ import unicodedata
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager, suppress
 from math import isfinite
-from typing import Any, BinaryIO, Literal
+from typing import Any, BinaryIO
 
+from seqmix.beside import beside, failing, failure
 from seqmix.errors import OutputError, SeqmixError, visible
 
 FORMATS = ("table", "csv", "jsonl")
@@ -51,7 +52,7 @@ class Writer:
         except BrokenPipeError:
             raise
         except OSError as error:
-            raise _failure(self._name, error) from error
+            raise failure(self._name, error) from error
 
     def flush(self) -> None:
         with failing(self._name):
@@ -150,35 +151,16 @@ def writing(path: str | None, format: str | None) -> Iterator[Writer]:
             raise
         writer.flush()
     else:
-        with _opened(path, path, "wb") if _is_special(path) else _beside(path) as file:
+        with _opened(path) if _is_special(path) else beside(path) as file:
             writer = Writer(file, path, format)
             yield writer
             writer.flush()
 
 
 @contextmanager
-def _beside(path: str) -> Iterator[BinaryIO]:
-    """A new file beside `path` that takes its place and its rights at the end; removed if anything fails."""
-    target = os.path.realpath(path)  # a link stays a link
-    part = os.path.join(os.path.dirname(target), f".{os.path.basename(target)}.{os.urandom(4).hex()}")
-    try:
-        with _opened(part, path, "xb") as file:
-            yield file
-            with failing(path):
-                with suppress(FileNotFoundError):
-                    os.chmod(part, stat.S_IMODE(os.stat(target).st_mode))
-                os.fsync(file.fileno())
-        with failing(path):
-            os.replace(part, target)
-    finally:
-        with suppress(FileNotFoundError):
-            os.unlink(part)
-
-
-@contextmanager
-def _opened(place: str, name: str, mode: Literal["wb", "xb"]) -> Iterator[BinaryIO]:
-    with failing(name):
-        file = open(place, mode)  # noqa: SIM115
+def _opened(path: str) -> Iterator[BinaryIO]:
+    with failing(path):
+        file = open(path, "wb")  # noqa: SIM115
     try:
         yield file
     finally:
@@ -191,21 +173,6 @@ def _is_special(path: str) -> bool:
     with suppress(OSError):
         return not stat.S_ISREG(os.stat(path).st_mode)
     return False
-
-
-@contextmanager
-def failing(name: str) -> Iterator[None]:
-    """Errors of the operating system in here are errors of the output `name`."""
-    try:
-        yield
-    except BrokenPipeError:
-        raise
-    except OSError as error:
-        raise _failure(name, error) from error
-
-
-def _failure(name: str, error: OSError) -> OutputError:
-    return OutputError(f"cannot write {visible(name)}: {error.strerror}")
 
 
 def _width(text: str) -> int:

@@ -31,7 +31,7 @@ class Mixture(Kept):
     Codes are numbered in order of first appearance; a byte is its own code.
     """
 
-    kept: tuple[str, ...] = ("bits", "model_bits", "rows", "awake", "asleep", "seen")
+    kept: tuple[str, ...] = ("bits", "model_bits", "rows", "present", "awake", "asleep", "seen")
 
     def __init__(
         self,
@@ -53,6 +53,7 @@ class Mixture(Kept):
         self._alphabet = 256 if kind == "bytes" else 0
         self.seen = self._alphabet
         self.rows = 0
+        self.present = 0  # rows with a value
         self.bits = 0.0
         self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
         self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows with a value that each model predicted itself
@@ -95,6 +96,12 @@ class Mixture(Kept):
             return np.concatenate([self.absorb(rows[at : at + CHUNK], frozen=frozen) for at in starts])
         if not len(rows):
             return np.zeros(0)
+        bits, losses = self._mix(rows, ask, frozen)
+        self._charge(bits, losses)
+        return bits
+
+    def _mix(self, rows: Rows, ask: Ask | None, frozen: bool) -> tuple[Floats, Floats]:
+        """Losses of the mixture, (n,), and of each model, (n, models), what the mixture lost where it slept."""
         if not frozen:
             self._admit(rows.codes)
         asks = [None if ask is None else ask.again() for _ in self.models]
@@ -113,10 +120,16 @@ class Mixture(Kept):
         if ask is not None:
             ask.laws[:] = added_up(before, [part.laws for part in asks if part is not None])
         self.rows += len(rows)
-        self.bits += float(np.nansum(bits))
-        self.model_bits += np.nansum(np.where(asleep, bits[:, None], losses), axis=0)
+        self.present += int((rows.codes >= 0).sum())
         self.awake += (~asleep & (rows.codes >= 0)[:, None]).sum(axis=0)
-        return bits
+        return bits, np.where(asleep, bits[:, None], losses)
+
+    def _charge(self, bits: Floats, losses: Floats) -> None:
+        """Add these losses, see `_mix`, to the sums, one row after the other: no cut into chunks changes a bit."""
+        table = np.concatenate([bits[:, None], losses], axis=1)
+        table = np.where(np.isnan(table), 0.0, table)
+        sums = np.add.accumulate(np.concatenate([[[self.bits, *self.model_bits]], table]))[-1]
+        self.bits, self.model_bits = float(sums[0]), sums[1:].copy()
 
     def _check(self, bits: Floats, rows: Rows) -> None:
         if np.isnan(bits).any():

@@ -16,7 +16,7 @@ from seqmix.models.laws import NumberLaw
 from seqmix.models.numbers import FIRST, Context
 from seqmix.models.protocol import Ask, Floats, leading, split
 from seqmix.series.grid import Grid
-from seqmix.series.rows import Rows
+from seqmix.series.rows import CHUNK, Rows
 
 TINY = 1e-300
 """Numbers nearer to 0 count as 0: there floats lose their digits."""
@@ -71,6 +71,11 @@ class NumberMixture(Mixture):
         if not isinstance(rows, Rows):
             rows = Rows.of(np.array(rows, dtype=np.float64), None, self.rows)
         assert ask is None and rows.values is not None, "laws of numbers are asked for with predict"
+        if len(rows) > CHUNK:
+            starts = range(0, len(rows), CHUNK)
+            return np.concatenate([self.absorb(rows[at : at + CHUNK], None, frozen) for at in starts])
+        if not len(rows):
+            return np.zeros(0)
         values = self.grid.snap(np.where(np.abs(rows.values) < TINY, 0.0, rows.values))
         widths, events = self.grid.cells(values)
         # what a double can hardly square is kept from the models, and charged by the law that knows nothing
@@ -81,16 +86,13 @@ class NumberMixture(Mixture):
             cells = np.clip(widths * self.factor, 1e-290, HUGE)
         self.latest = Rows(rows.codes, rows.times, rows.first, shown, cells)
         self.latest_events = float(events.sum())
-        bits = super().absorb(self.latest, None, frozen)
+        bits, losses = self._mix(self.latest, None, frozen)
         alone = np.isnan(bits) & (rows.codes >= 0)  # nobody was awake
         for t in np.flatnonzero(huge | alone).tolist():
-            unaided = FIRST.bits(float(rows.values[t]), float(widths[t])) - (0.0 if np.isnan(bits[t]) else bits[t])
-            bits[t] = FIRST.bits(float(rows.values[t]), float(widths[t]))
-            self.bits += unaided
-            self.model_bits += unaided
-        self.bits += self.latest_events
-        self.model_bits += self.latest_events
-        return bits + events
+            bits[t] = losses[t] = FIRST.bits(float(rows.values[t]), float(widths[t]))
+        bits = bits + events
+        self._charge(bits, losses + events[:, None])
+        return bits
 
     def _choose_unit(self, values: Floats) -> None:
         """Numbers of a size far from 1 go to the models times a power of two, fixed by the first that is not 0."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -41,6 +42,16 @@ class Table(Kept):
                 self.mask[line] |= np.uint8(1 << digit)
         self._slots = np.zeros(_DEEPEST, dtype=np.int64)
         self._known = np.zeros(_DEEPEST, dtype=np.int32)
+
+    def state(self) -> dict[str, Any]:
+        """The mask as far as it is used: how far the digits reach depends on what else the process has read."""
+        return super().state() | {"mask": np.trim_zeros(self.mask, "b").copy()}
+
+    def restore(self, state: dict[str, Any]) -> None:
+        super().restore(state)
+        self.digits.grow(int(self.counters[0]))
+        used, self.mask = self.mask, np.zeros(self.digits.lines, dtype=np.uint8)
+        self.mask[: len(used)] = used
 
     def admit(self, codes: Codes) -> None:
         """Make room for the digits of all these states."""

@@ -117,9 +117,9 @@ class _Bet(Setting):
         laws: Floats,
         frozen: bool = False,
     ) -> Floats:
-        more = int(codes.max(initial=-1)) + 1 - len(self.counts)
-        if more > 0:
-            self.counts = np.concatenate([self.counts, np.zeros(max(more, len(self.counts)))])
+        room = 1 << int(codes.max(initial=0)).bit_length()
+        if room > len(self.counts):
+            self.counts = np.concatenate([self.counts, np.zeros(room - len(self.counts))])
         bits = np.empty(len(codes))
         kernel.bet(
             view(codes), view(guess), view(trust), view(self.events), view(self.counts), view(self.counters),

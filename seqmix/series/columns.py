@@ -87,6 +87,22 @@ class Sample:
             raise OptionError(f"column {self.describe(value)} cannot be both the value and the time")
         return value, when
 
+    def again(
+        self, names: tuple[str | None, str | None], places: tuple[int | None, int | None]
+    ) -> tuple[int, int | None]:
+        """The indices of the columns of an earlier part of the log: by name, or by number where there are no names.
+
+        Raises OptionError where they are not there.
+        """
+        if self.single:
+            if places[1] is not None and self.columns[0]:
+                raise OptionError(f"{visible(self.log)} has one value a line, and no column of times")
+            return 0, None
+        value, when = names if self.names else places
+        if value is None:
+            raise OptionError(f"{visible(self.log)} has columns, and the rows before it are one value a line")
+        return self.find(value), None if when is None else self.find(when)
+
     def _list(self) -> str:
         return "its columns are " + ", ".join(map(self.describe, range(len(self.columns))))
 

@@ -29,25 +29,36 @@ class GapFiller:
 
     A step within 10 % of k cadences, k >= 2, is a gap of k - 1 rows.
 
+    cadence: once `settled`; found from the first `CHUNK` rows. last: time of the last row, None before the first.
     gaps: gaps met so far. filled: rows put in. left: gaps too long to fill. disorder: rows whose time is not
     later than that of the row before; they are kept as they are.
     """
 
-    def __init__(self, cadence: int | None) -> None:
-        self.cadence = cadence
+    def __init__(self) -> None:
+        self.cadence: int | None = None
+        self.settled = False
+        self.last: int | None = None
         self.gaps = self.filled = self.left = self.disorder = 0
-        self._last: int | None = None
+
+    def settle(self, cadence: int | None) -> None:
+        """Take this cadence instead of looking for one."""
+        self.cadence, self.settled = cadence, True
 
     def fill(self, pieces: Iterable[Piece]) -> Iterator[Piece]:
-        """The rows of `pieces` with missing rows put in, `CHUNK` at a time or fewer."""
+        """The rows of `pieces` with missing rows put in, `CHUNK` at a time or fewer.
+
+        Where no cadence is settled, the first piece with times has `CHUNK` rows or more, or all of the log.
+        """
         for held, times in pieces:
             if times is None or not len(times):
                 yield held, times
                 continue
-            before = int(times[0]) - 1 if self._last is None else self._last
+            if not self.settled:
+                self.settle(find_cadence(times[:CHUNK]))
+            before = int(times[0]) - 1 if self.last is None else self.last
             steps = np.diff(times, prepend=before)
             self.disorder += int(np.count_nonzero(steps <= 0))
-            self._last = int(times[-1])
+            self.last = int(times[-1])
             missing = self._missing(steps)
             if missing is None:
                 yield held, times

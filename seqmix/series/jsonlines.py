@@ -54,6 +54,13 @@ class JsonLines:
         names = list(objects[0])
         return Sample(log, names, [[_text(record.get(name)) for record in objects] for name in names])
 
+    def again(self, log: str, names: tuple[str | None, str | None], header: bool | None) -> Sample:
+        """A name that the first object happens not to have is a column all the same."""
+        first = self._records[0]
+        if isinstance(first, dict):
+            self._records[0] = dict.fromkeys((name for name in names if name is not None), None) | first
+        return self.sample(log, Options(), [])
+
     def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The values, or the values under one key.
 

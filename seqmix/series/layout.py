@@ -51,6 +51,12 @@ class Layout(Protocol):
     def sample(self, log: str, options: Options, notes: list[str]) -> Sample:
         """The start of the log as columns; adds to `notes` what was assumed about a header."""
 
+    def again(self, log: str, names: tuple[str | None, str | None], header: bool | None) -> Sample:
+        """The same of the next part of a log, whose columns have these names.
+
+        header: whether the first line names them; None: it does if they stand there.
+        """
+
     def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The cells of the column `value`; their times, from the column `time`, and lines go `beside`.
 

@@ -29,6 +29,10 @@ class Lines:
         names = [lines[0].strip()] if header and lines else None
         return Sample(log, names, [lines[header:]], single=True)
 
+    def again(self, log: str, names: tuple[str | None, str | None], header: bool | None) -> Sample:
+        """As for a caller who asks for a column by name."""
+        return self.sample(log, Options(names[0], header=header), [])
+
     def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The lines after the header."""
         beside.before = len(sample.names or ())

@@ -17,10 +17,13 @@ class Log(Facts):
     """An opened log; `open_log` makes one. Its alphabet grows, and gaps are counted, while it is read.
 
     Use it as a context manager, or `close` it.
+    pieces: the rows as they are logged. filler: puts missing rows between them. first: row number of the first.
     """
 
     pieces: Iterator[Piece] = field(repr=False)
     close: Callable[[], None] = field(repr=False)
+    filler: GapFiller = field(default_factory=GapFiller, repr=False)
+    first: int = 0
     _begun: bool = field(default=False, init=False, repr=False)
 
     def chunks(self) -> Iterator[Rows]:
@@ -35,9 +38,9 @@ class Log(Facts):
         return self._chunks()
 
     def _chunks(self) -> Iterator[Rows]:
-        filler = GapFiller(self.cadence)
-        for rows in cut(filler.fill(self.pieces)):
-            self.gaps, self.filled = filler.gaps, filler.filled
+        filler = self.filler
+        for rows in cut(filler.fill(self.pieces), self.first):
+            self.cadence, self.gaps, self.filled = filler.cadence, filler.gaps, filler.filled
             yield rows
         self.notes += filler.notes()
         self.close()

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from itertools import islice
 
 import numpy as np
@@ -11,7 +11,7 @@ from ..errors import DataError, OptionError, visible
 from .alphabet import Alphabet, Codes
 from .clock import Clock, TimeTextError, is_time
 from .columns import Options, Wanted
-from .gaps import find_cadence
+from .facts import Facts
 from .jsonlines import JsonLines
 from .kinds import KINDS, are_numbers, is_text
 from .layout import Beside, Layout
@@ -32,6 +32,7 @@ def open_log(
     kind: str | None = None,
     header: bool | None = None,
     alphabet: Alphabet | None = None,
+    after: Facts | None = None,
 ) -> Log:
     """Open a log: a path, "-" for standard input, or an open file.
 
@@ -41,6 +42,8 @@ def open_log(
 
     column, time: name or number from 1 of the columns of values and times. kind: "states", "numbers" or "bytes".
     header: whether the first line names the columns. alphabet: of another log, to go on with its states.
+    after: of a log whose next rows these are: kind, layout, columns, clock and states are those of that log.
+    A first line is then a header if that log had one and its column is named in it.
     Blank cells, NA, NaN and null are missing rows, and so are infinite numbers; gaps of a log with a regular
     clock become such rows. A column whose first `CHUNK` values are all numbers is one of numbers.
     Blanks around cells do not count, save in JSON strings.
@@ -57,13 +60,17 @@ def open_log(
         kind = known
     if kind not in (None, *KINDS):
         raise OptionError(f"no kind '{visible(str(kind))}'; the kinds are {', '.join(KINDS)}")
+    options = Options(column, time, kind, header)
+    if after is not None:
+        after.agree(options)
+        alphabet = after.alphabet
+        options = Options(kind=after.kind, header=header)
     source = Source(log)
     try:
-        options = Options(column, time, kind, header)
         text = Text(source)
         if _as_bytes(text, options):
             return _open_bytes(source, text, options, alphabet)
-        return _open_text(source, text, options, Alphabet() if alphabet is None else alphabet)
+        return _open_text(source, text, options, Alphabet() if alphabet is None else alphabet, after)
     except BaseException:
         source.close()
         raise
@@ -91,16 +98,24 @@ def _open_bytes(source: Source, text: Text, options: Options, alphabet: Alphabet
     )
 
 
-def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet) -> Log:
+def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet, after: Facts | None) -> Log:
     name = source.name
     start = text.sample_text()
-    layout: Layout = JsonLines.detect(start) or Separated.detect(start, text.whole) or Lines(start)
     notes: list[str] = []
-    sample = layout.sample(name, options, notes)
-    value, when = sample.choose(options.column, options.time, notes)
+    if after is None:
+        layout: Layout = JsonLines.detect(start) or Separated.detect(start, text.whole) or Lines(start)
+        sample = layout.sample(name, options, notes)
+        value, when = sample.choose(options.column, options.time, notes)
+        times = [] if when is None else sample.columns[when]
+        clock = Clock.like(next(filter(is_time, times), ""))
+    else:
+        layout = _layout_after(after, start, text)
+        columns = (after.column, after.time_column)
+        header = False if options.header is None and not after.header else options.header
+        sample = layout.again(name, columns, header)
+        value, when = sample.again(columns, after.places)
+        clock = after.clock
     kind = options.kind or ("numbers" if are_numbers(sample.columns[value], layout.typed) else "states")
-    times = [] if when is None else sample.columns[when]
-    clock = Clock.like(next(filter(is_time, times), ""))
     beside = Beside()
     cells = layout.cells(text, sample, value, when, beside)
     if kind == "numbers":
@@ -114,23 +129,28 @@ def _open_text(source: Source, text: Text, options: Options, alphabet: Alphabet)
         format=layout.name,
         column=sample.label(value),
         time_column=None if when is None else sample.label(when),
+        places=(None if sample.single else value + 1, None if when is None else when + 1),
         separator=layout.separator,
         header=sample.names is not None and layout.name != "jsonl",
         compression=source.compression,
         clock=clock,
-        cadence=_cadence(clock, times),
         notes=notes,
         pieces=_pieces(held, beside, name, clock, when),
         close=source.close,
     )
 
 
-def _cadence(clock: Clock, times: Sequence[str]) -> int | None:
-    try:
-        return find_cadence(clock.parse(times))
-    except TimeTextError as error:
-        # The bad time is reported when its row is reached.
-        return find_cadence(clock.parse(times[: error.index]))
+def _layout_after(after: Facts, start: str, text: Text) -> Layout:
+    """The layout of the next rows of a log, that of the rows before them; one value a line where there is none."""
+    if after.format == "jsonl":
+        found: Layout | None = JsonLines.detect(start)
+    elif after.separator is not None:
+        found = Separated.detect(start, text.whole, (after.separator,))
+    else:
+        found = Lines(start)
+    if found is None and start.strip() and after.places[0] is not None:
+        raise DataError(f"the rows before it are {after.format}, and these are not", text.name)
+    return found or Lines(start)
 
 
 def _codes(cells: Iterator[str], codes: Codes) -> Iterator[np.ndarray]:

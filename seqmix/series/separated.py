@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import io
 from collections import Counter
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from typing import Any
 
 from ..errors import DataError, visible
@@ -28,10 +28,10 @@ class Separated:
         self._rows = rows
 
     @classmethod
-    def detect(cls, start: str, whole: bool) -> Separated | None:
+    def detect(cls, start: str, whole: bool, separators: Sequence[str] = SEPARATORS) -> Separated | None:
         """The layout in which at least two thirds of the rows have the same number of cells, two or more."""
         best, best_share = None, 2 / 3
-        for separator in SEPARATORS:
+        for separator in separators:
             if separator in start:
                 rows = _sample_rows(start, separator, whole)
                 for width, count in Counter(map(len, rows)).most_common(1):
@@ -54,6 +54,12 @@ class Separated:
         names = [cell.strip() for cell in self._rows[0]] if header else None
         columns = [[row[index] for row in self._rows[header:]] for index in range(self._width)]
         return Sample(log, names, columns)
+
+    def again(self, log: str, names: tuple[str | None, str | None], header: bool | None) -> Sample:
+        """A header is known by the names of the columns that are read."""
+        if header is None:
+            header = {name for name in names if name is not None} <= {cell.strip() for cell in self._rows[0]}
+        return self.sample(log, Options(header=header), [])
 
     def cells(self, text: Text, sample: Sample, value: int, time: int | None, beside: Beside) -> Iterator[str]:
         """The cells of one column.

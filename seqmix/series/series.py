@@ -14,7 +14,7 @@ from .alphabet import Alphabet, Codes
 from .clock import Clock
 from .columns import Wanted
 from .facts import Facts
-from .gaps import GapFiller, find_cadence
+from .gaps import GapFiller
 from .kinds import KINDS, are_numbers
 from .numbers import NumberError, Numbers
 from .opening import open_log
@@ -98,10 +98,9 @@ class Series(Facts):
         if len(times) != len(held):
             raise OptionError(f"{len(held)} values, but {len(times)} times")
         self.clock = clock
-        self.cadence = find_cadence(times[:CHUNK])
-        filler = GapFiller(self.cadence)
+        filler = GapFiller()
         self._hold(*join(list(filler.fill([(held, times)]))))
-        self.gaps, self.filled = filler.gaps, filler.filled
+        self.cadence, self.gaps, self.filled = filler.cadence, filler.gaps, filler.filled
         self.notes += filler.notes()
 
 
