@@ -141,7 +141,7 @@ class NumberLaw:
         flat = np.ascontiguousarray(levels.reshape(-1))
         low, high = self._bracket(float(flat.min()), float(flat.max()))
         # a first guess: the normal law of the same middle and spread
-        out = self._middle + self._spread * np.array([_normal_quantile(level) for level in flat.tolist()])
+        out = self._middle + self.spread * np.array([_normal_quantile(level) for level in flat.tolist()])
         wide = self.scales > 0
         plain, log_scale = (
             float(self.scales.min(initial=1e300, where=wide & side)) for side in (~self.logs, self.logs)
@@ -161,7 +161,7 @@ class NumberLaw:
         return float(self.weights @ np.where(self.logs, np.exp(np.minimum(self.centres, 700.0)), self.centres))
 
     @cached_property
-    def _spread(self) -> float:
+    def spread(self) -> float:
         grown = np.where(self.logs, np.exp(np.minimum(self.centres, 700.0)), 1.0)
         return float(self.weights @ (self.scales * grown))
 
@@ -247,7 +247,7 @@ class NumberLaw:
         if start == end:
             return 0.0
         # y goes from start to end as expm1 of an even parameter, so steps are as fine as the law, then ever wider
-        growth = min(float(np.log1p(abs(end - start) / max(self._spread, 1e-300))), 600.0) + 1.0
+        growth = min(float(np.log1p(abs(end - start) / max(self.spread, 1e-300))), 600.0) + 1.0
         even = np.linspace(0.0, 1.0, _INTERVALS + 1)
         pace = growth * np.exp(growth * even) / np.expm1(growth)
         mass = self.cdf(start + (end - start) * (np.expm1(growth * even) / np.expm1(growth)))

@@ -1,0 +1,106 @@
+"""How improbable a row was under the law that predicted it: the mass of all that was no likelier.
+
+With that p-value, rows of a log that the law tells of truly are at most as improbable as p in a share p of all rows.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from seqmix.models.laws import Floats, NumberLaw
+
+_NEAR = 6  # cells each way from a place that stand for themselves
+_COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the one before, further out
+_SMALL = 0.02  # p-values from which on the coarse stretches will do
+_REACH = 1e3  # spreads to either side
+_MOST = 1e13  # cells
+_SAME = 1 + 1e-9  # masses that differ by rounding are alike
+
+
+@dataclass(frozen=True)
+class Improbable:
+    """What a law says of a row.
+
+    p_value: mass of all outcomes no likelier than the one that came. expected_bits: loss that the law expected.
+    levels: (k,) the p-values that there can be, ascending; whole: (k,) bool, whether there is none between this
+    level and the one before.
+    """
+
+    p_value: float
+    expected_bits: float
+    levels: Floats
+    whole: np.ndarray
+
+
+def of_state(masses: Floats, code: int) -> Improbable:
+    """masses (k,): of every state, and of an unseen one; code: of the one that came."""
+    some = masses[masses > 0]
+    levels = np.cumsum(np.sort(some))
+    p = min(float(masses[masses <= masses[code] * _SAME].sum()), 1.0)
+    return Improbable(p, max(float(-(some * np.log2(some)).sum()), 0.0), levels, np.ones(len(levels), dtype=bool))
+
+
+def of_number(law: NumberLaw, value: float, width: float) -> Improbable:
+    """Of a value on a grid of `width`: cells around it and around the median one by one, further out in stretches."""
+    middle = float(np.clip(np.rint((law.median - value) / width), -_MOST, _MOST))
+    reach = float(np.clip(_REACH * law.spread / width + abs(middle), 16.0, _MOST))
+    found = _at(law, value, width, middle, reach, _COARSE)
+    return found if found.p_value > _SMALL else _at(law, value, width, middle, reach, _FINE)
+
+
+def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float, growth: float) -> Improbable:
+    out = np.arange(_NEAR + 1.0)
+    while out[-1] < reach:
+        out = np.append(out, np.ceil(out[-1] + (out[-1] - out[-2]) * growth))
+    sides = np.concatenate([-out[::-1], out + 1.0]) - 0.5  # edges, in cells from the middle of a cell
+    edges = np.unique(np.concatenate([sides, sides + middle]))
+    with np.errstate(over="ignore"):
+        below = law.cdf(np.clip(value + edges * width, -1e308, 1e308))
+    masses = np.maximum(np.diff(below, prepend=0.0, append=1.0), 0.0)
+    cells = np.concatenate([[_MOST], np.diff(edges), [_MOST]])
+    each = masses / cells
+    came = int(np.searchsorted(edges, 0.0))  # the stretch that is the cell of the value
+    order = np.argsort(each, kind="stable")
+    levels = np.cumsum(masses[order])
+    p = float(masses @ _no_likelier(each, cells, each[came] * _SAME))
+    there = each > 0
+    expected = float(-(masses[there] * np.log2(each[there])).sum())
+    return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
+
+
+def _no_likelier(each: Floats, cells: Floats, than: float) -> Floats:
+    """Share of the mass of each stretch in cells of mass up to `than`: the mass of a cell moves as an exponential
+    from one end of a stretch to the other."""
+    ends = np.sqrt(each[1:] * each[:-1])
+    low, high = np.append(each[0], ends), np.append(ends, each[-1])
+    low, high = np.minimum(low, high), np.maximum(low, high)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        share = np.clip((than - low) / (high - low), 0.0, 1.0)
+    return np.where((cells > 1.0) & (low < high), share, each <= than)
+
+
+class Alarms:
+    """Which rows are surprising at a rate of false alarms, for laws that tell of the log truly.
+
+    Where few outcomes are possible, no p-value may be just as small as the rate: what a row cannot spend of it is
+    kept for the next ones, up to ten times the rate.
+    """
+
+    def __init__(self, rate: float) -> None:
+        """rate: false alarms a row."""
+        self.rate = rate
+        self.kept = 0.0
+
+    def rings(self, row: Improbable) -> bool:
+        budget = min(self.kept + self.rate, 10.0 * self.rate)
+        at = int(np.searchsorted(row.levels, budget, side="right"))  # levels within the budget
+        if at == len(row.levels):
+            spent = budget
+        elif row.whole[at]:
+            spent = float(row.levels[at - 1]) if at else 0.0
+        else:
+            spent = budget
+        self.kept = budget - spent
+        return row.p_value <= budget
