@@ -77,8 +77,6 @@ class Learned:
             if asked[option] not in (None, self.asked[option]):
                 raise OptionError(f"{name} was learned with another {option}; leave --{option} out")
 
-    # ---- going on
-
     @contextmanager
     def go_on(self, log: Any, **reading: Any) -> Iterator[Log]:
         """The next rows of the log, ready to be read: `chunks()` gives them to `mixture`, which has learned all before.
@@ -137,8 +135,6 @@ class Learned:
         self._mixture = self._blank(self.asked["models"])
         for rows in cut(self.filler.fill([] if before is None else [before])):
             self._mixture.absorb(rows)
-
-    # ---- files
 
     def save(self, path: str | PathLike[str]) -> None:
         """Write the state file `path`, see `seqmix.state`; the caller holds its lock. Raises OutputError."""
