@@ -127,7 +127,7 @@ def test_any_chunking_of_a_mixture_gives_equal_bits() -> None:
 
 def test_many_rows_at_once_are_those_rows_in_chunks() -> None:
     values = small_counts(5000).values
-    whole, parts = (NumberMixture(["counts", "rules"], context=CONTEXT) for _ in range(2))
+    whole, parts = (NumberMixture(["counts", "rules"], context=Context()) for _ in range(2))
     bits = whole.absorb(values)
     assert np.array_equal(
         bits, np.concatenate([parts.absorb(values[a:b]) for a, b in pairwise([0, 7, 4096, 4100, 5000])])
