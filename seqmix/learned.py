@@ -85,8 +85,6 @@ class Learned:
                 words = option.replace("_", " "), option.replace("_", "-")
                 raise OptionError(f"{name} was learned with another {words[0]}; leave --{words[1]} out")
 
-    # ---- going on
-
     @contextmanager
     def go_on(self, log: Any, **reading: Any) -> Iterator[Log]:
         """The next rows of the log, ready to be read: `chunks()` gives them to `mixture`, which has learned all before.
@@ -145,8 +143,6 @@ class Learned:
         self._mixture = self._blank(self.asked["models"])
         for rows in cut(self.filler.fill([] if before is None else [before])):
             self._mixture.absorb(rows)
-
-    # ---- files
 
     def save(self, path: str | PathLike[str]) -> None:
         """Write the state file `path`, see `seqmix.state`; the caller holds its lock. Raises OutputError."""

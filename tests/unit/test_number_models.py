@@ -30,6 +30,17 @@ def test_any_chunking_of_a_mixture_gives_equal_bits() -> None:
     assert np.isfinite(whole).all()
 
 
+def test_many_rows_at_once_are_those_rows_in_chunks() -> None:
+    values = small_counts(5000).values
+    whole, parts = (NumberMixture(["counts", "rules"], context=Context()) for _ in range(2))
+    bits = whole.absorb(values)
+    assert np.array_equal(
+        bits, np.concatenate([parts.absorb(values[a:b]) for a, b in pairwise([0, 7, 4096, 4100, 5000])])
+    )
+    assert (whole.bits, whole.model_bits.tolist()) == (parts.bits, parts.model_bits.tolist())
+    assert whole.bits == pytest.approx(bits.sum())
+
+
 def test_the_loss_of_a_mixture_is_that_of_its_law() -> None:
     rows = waves(200)
     one = NumberMixture(context=CONTEXT, resolution=0.1)
