@@ -8,7 +8,7 @@ import zlib
 
 def sizes(data: bytes) -> dict[str, int]:
     """Bytes that `data` takes under deflate (RFC 1951, without a wrapper), bzip2, zstandard and brotli."""
-    import brotli  # type: ignore[import-untyped]  # here, not above: start-up time
+    import brotli  # here, not above: start-up time
     import zstandard
 
     deflate = zlib.compressobj(9, zlib.DEFLATED, -zlib.MAX_WBITS)
