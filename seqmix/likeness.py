@@ -14,6 +14,7 @@ from seqmix.distances import Distances, text_of_codes, text_of_numbers
 from seqmix.errors import OptionError, visible
 from seqmix.inputs import Held, opened
 from seqmix.mixture.mixture import Mixture
+from seqmix.models.registry import SHARE
 from seqmix.reading import mixture_for
 from seqmix.series import MISSING, Alphabet, Log, Rows, Series
 from seqmix.series.grid import Grid
@@ -68,14 +69,16 @@ def alike(
     *,
     to: Any = None,
     models: Sequence[str] | None = None,
+    compressor_share: float = SHARE,
     watch: Watch | None = None,
     **reading: Any,
 ) -> Likeness:
     """How many bits each log saves when another one is known first: for each pair of logs, in both directions.
 
     logs: at least two, of one kind, as for `seqmix.forecast`; each is read once, and held. to: one more log; only
-    what the others save for this one is answered then. models: names, None for all that fit. watch: rows pass
-    through it as the models read them, to show progress. reading: column, time, kind, header, as for `seqmix.read`.
+    what the others save for this one is answered then. models: names, None for all that fit.
+    compressor_share: of the run time, for the models made of compressors. watch: rows pass through it as the models
+    read them, to show progress. reading: column, time, kind, header, as for `seqmix.read`.
 
     The bits after are those of `score(known_first, against=log)`. Logs of numbers share the coarsest grid on which
     all lie, and the cadence of the first. Times count where every log has them.
@@ -83,7 +86,7 @@ def alike(
     """
     if models is not None and not all(isinstance(model, str) for model in models):
         raise OptionError("a likeness takes models by name: each log starts with new ones")
-    held = _Logs(watch or iter)
+    held = _Logs(watch or iter, compressor_share)
     for log in logs:
         held.add(log, reading)
     targets: Sequence[int] = range(len(held.logs))
@@ -98,11 +101,12 @@ def alike(
 class _Logs:
     """Logs of one kind, each with the rows it has."""
 
-    def __init__(self, watch: Watch) -> None:
+    def __init__(self, watch: Watch, compressor_share: float) -> None:
         self.logs: list[Log | Series] = []
         self._held: list[Held] = []
         self._timed = True  # all of them, so far
         self._watch = watch
+        self._share = compressor_share
 
     def add(self, log: Any, reading: dict[str, Any]) -> None:
         with opened(log, **reading) as source:
@@ -127,7 +131,7 @@ class _Logs:
 
         def learn(rows: Iterable[Rows], state: dict[str, Any]) -> tuple[float, Mixture]:
             """Bits that a mixture loses on these rows, from a blank start or a `state` on; and the mixture."""
-            mixture = mixture_for(self.logs[0], first, models, resolution=resolution)
+            mixture = mixture_for(self.logs[0], first, models, resolution=resolution, compressor_share=self._share)
             if state:
                 mixture.restore(state)
             return sum(float(mixture.absorb(part).sum()) for part in self._watch(rows)), mixture

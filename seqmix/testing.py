@@ -127,7 +127,7 @@ def any_chunking_gives_equal_bits(make: Make, rows: Rows) -> None:
     n = len(rows)
     whole = make().absorb(rows)
     assert whole.shape == (n,), "one loss a row"
-    for cuts in ([1], [15, 16, 17, 64, n // 2], list(range(7, n, 7))):
+    for cuts in ([1], sorted({15, 16, 17, 64, n // 2} & set(range(1, n))), list(range(7, n, 7))):
         one = make()
         pieces = [one.absorb(rows[a:b]) for a, b in pairwise([0, *cuts, n])]
         _same(np.concatenate(pieces), whole, "cut into other chunks")

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from contextlib import ExitStack
 from dataclasses import replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -29,7 +29,7 @@ COLUMNS = ("log", "known_first", "bits_alone", "bits_after", "saved_bits", "save
 @reads_logs
 @writes_answer
 def command(
-    source: Source, answer: Answer, logs: tuple[str, ...], models: list[str] | None, to: str | None, matrix: bool
+    source: Source, answer: Answer, library: dict[str, Any], logs: tuple[str, ...], to: str | None, matrix: bool
 ) -> None:
     """Show how many bits each log saves if another is known first.
 
@@ -54,8 +54,8 @@ def command(
             likeness = seqmix.alike(
                 _opened(source, others, notes),
                 to=target,
-                models=models,
                 watch=progress.count if source.watched else None,
+                **library,
             )
         finally:
             progress.erase()

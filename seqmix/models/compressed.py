@@ -224,6 +224,8 @@ class Reader(Setting):
         lengths = np.array(self._compressor.code_length(self._history, ends), dtype=np.float64)
         self.calls += len(ends)
         self.spent += _ROW + len(ends) * self._compressor.cost
+        if len(lengths) != len(ends) or not np.isfinite(lengths).all():
+            raise ValueError("code lengths are finite, one a candidate")
         lengths = lengths.reshape(len(self.windows), len(some)).T / 8.0
         lengths = lengths - lengths.min(axis=0)
         scores = lengths @ self.factors

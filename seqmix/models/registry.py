@@ -88,13 +88,14 @@ def make(kind: str, context: Context, names: Sequence[str] | None = None, share:
     if not 0.0 <= share <= 1.0:
         raise OptionError(f"a share of the run time lies between 0 and 1, not {share:g}")
     fitting = _fitting(kind, context, share)
-    chosen = list(fitting.values()) if names is None else _chosen(kind, fitting, names)
+    chosen = list(fitting.values()) if names is None else _chosen(kind, context, fitting, names)
     compressors = [model for model in chosen if _compresses(model)]
     always = share == 1.0 or len(compressors) == len(chosen)
     each = 0.0 if always else share / (1.0 - share) / max(len(compressors), 1)
     allowance = None if always else compressed.Allowance(each * _START, each * _ROW[kind])
     what: Any = context if kind == "numbers" else 256 if kind == "bytes" else 0
-    return [_made(model, what, allowance) for model in chosen]
+    made = [_made(model, what, allowance) for model in chosen]
+    return _some([model for model in made if model is not None])
 
 
 def _fitting(kind: str, context: Context, share: float) -> dict[str, Any]:
@@ -114,10 +115,11 @@ def _compresses(model: Any) -> bool:
 
 
 def _made(model: Any, what: Any, allowance: compressed.Allowance | None) -> Any:
+    """None where a plug-in cannot make its model."""
     return model(what, allowance) if _compresses(model) else model(what)
 
 
-def _chosen(kind: str, fitting: dict[str, Any], names: Sequence[str]) -> list[Any]:
+def _chosen(kind: str, context: Context, fitting: dict[str, Any], names: Sequence[str]) -> list[Any]:
     """The models that are named, in the order of the library; plug-ins last."""
     known = {entry.name: entry for entry in entries()}
     if not names or len(set(names)) < len(names):
@@ -130,11 +132,14 @@ def _chosen(kind: str, fitting: dict[str, Any], names: Sequence[str]) -> list[An
         if name not in known and name != DEFAULT:
             from seqmix import plugins  # only where it is needed: start-up time
 
-            found = plugins.model(name, kind)
+            found = plugins.model(name, kind, context)
             if found is None and not plugins.exists(name):
                 raise OptionError(f"no model is called '{visible(name)}'; {_hint(name, kind, known)}")
             added += [] if found is None else [found]
-    models = [*(model for name, model in fitting.items() if name in wanted), *added]
+    return _some([*(model for name, model in fitting.items() if name in wanted), *added])
+
+
+def _some(models: list[Any]) -> list[Any]:
     if not models:
         raise OptionError("no model is left; name others, or default for all of the library")
     return models

@@ -97,7 +97,8 @@ def beside() -> None:
         )
         cost = np.log2(1 / (1 - prior_of_compressors(series.kind)))
         lines.append([
-            name, f"{rows:,}", f"{bits[0.0] / rows:.5f}", f"{bits[0.1] - bits[0.0]:+.3f}", f"{bits[0.9] - bits[0.0]:+.3f}",
+            name, f"{rows:,}", f"{bits[0.0] / rows:.5f}",
+            f"{bits[0.1] - bits[0.0]:+.3f}", f"{bits[0.9] - bits[0.0]:+.3f}",
             f"{cost:.3f}", f"{awake[1]} {awake[0]}", max(scores[0.9].models, key=lambda m: m["weight_after"])["name"],
         ])  # fmt: skip
     table(["log", "rows", "bits a row without", "with, share 0.1: bits more", "share 0.9: bits more",

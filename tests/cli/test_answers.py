@@ -19,10 +19,19 @@ PRINTERS = [*READERS, "models"]
 
 HEADERS = {
     "forecast": ["step", "time", "state", "probability"],
-    "score": ["section", "name", "bits", "bits_per_row", "prior_cost_bits", "weight_before", "weight_after"],
+    "score": [
+        "section",
+        "name",
+        "bits",
+        "bits_per_row",
+        "prior_cost_bits",
+        "weight_before",
+        "weight_after",
+        "rows_awake",
+    ],
     "weights": ["row", "time", "model", "weight"],
     "describe": ["field", "value"],
-    "models": ["name", "kinds", "prior_cost_bits", "summary", "source"],
+    "models": ["name", "kinds", "prior_cost_bits", "summary", "source", "package", "version"],
 }
 
 KEYS = {
@@ -32,7 +41,7 @@ KEYS = {
     "weights": ["row", "time", "weights"],
     "describe": ["name", "kind", "format", "compression", "column", "rows", "missing", "states", "alphabet",
                  "first_time", "last_time", "cadence_seconds", "gaps", "filled", "entropy_bits", "notes"],
-    "models": ["name", "kinds", "prior_cost_bits", "summary", "source"],
+    "models": ["name", "kinds", "prior_cost_bits", "summary", "source", "package", "version"],
 }  # fmt: skip
 
 

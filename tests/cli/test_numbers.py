@@ -18,7 +18,7 @@ from seqmix.cli.forecast_numbers import column_of, shower
 LEVELS = ["0.05", "0.1", "0.25", "0.5", "0.75", "0.9", "0.95"]
 ERRORS = ["mae", "rmse", "crps", "pinball"]
 COVERED = ["coverage_50", "coverage_80", "coverage_90"]
-PARTS = ["section", "name", "bits", "bits_per_row", "prior_cost_bits", "weight_before", "weight_after"]
+PARTS = ["section", "name", "bits", "bits_per_row", "prior_cost_bits", "weight_before", "weight_after", "rows_awake"]
 ASKING = [["forecast", "--steps", "3"], ["score", "--last", "4"], ["weights"]]
 
 
