@@ -17,12 +17,12 @@ from seqmix.errors import DataError, OptionError, visible
 from seqmix.inputs import opened_after
 from seqmix.mixture.mixture import Mixture
 from seqmix.models.protocol import Model
-from seqmix.reading import mixture_for
+from seqmix.reading import mixture_for, with_last
 from seqmix.series import CHUNK, Alphabet, Clock, Log, Rows
 from seqmix.series.facts import Facts
 from seqmix.series.gaps import GapFiller, find_cadence
 from seqmix.series.kinds import KINDS
-from seqmix.series.rows import Piece, cut, join
+from seqmix.series.rows import Piece, cut, join, joined
 
 _LOG = ("kind", "format", "column", "time_column", "places", "separator", "header", "clock", "cadence")
 
@@ -34,6 +34,7 @@ class Learned:
     """A mixture that has learned a log up to some row, and all it takes to go on with the next.
 
     facts: what the log is; its alphabet grows. mixture: what has learned the rows. filler: where the clock stands.
+    tail: the last rows, not absorbed yet: models that sleep may wake on them, if a forecast comes next.
     held: the rows as logged, while fewer than `CHUNK` were read: what these decide, the cadence, is decided anew with
     those that follow, so that a log learned in pieces is learned as in one. timed: whether the rows have times.
     """
@@ -58,13 +59,19 @@ class Learned:
         }
         self.timed: bool | None = None  # not known before the first row
         self.held: Piece | None = None
+        self.tail: Rows | None = None
         self.settled = False
         self.filler = GapFiller()
         self._mixture: Mixture | None = None
 
     @property
+    def rows(self) -> int:
+        """Learned so far, the tail too."""
+        return self.mixture.rows + (0 if self.tail is None else len(self.tail))
+
+    @property
     def mixture(self) -> Mixture:
-        """Blank before the first row."""
+        """Blank before the first row; it has learned all rows but the tail."""
         if self._mixture is None:
             self._mixture = self._blank(self.asked["models"])
         return self._mixture
@@ -87,7 +94,7 @@ class Learned:
 
     @contextmanager
     def go_on(self, log: Any, **reading: Any) -> Iterator[Log]:
-        """The next rows of the log, ready to be read: `chunks()` gives them to `mixture`, which has learned all before.
+        """The tail and the next rows of the log, ready to be read: `chunks()` gives them to `mixture`.
 
         log: a path, an open file, values, a Series, a Log opened with after=`facts`, or None for no rows. What is read
         counts as learned: `save` after the last chunk was absorbed, or not at all.
@@ -97,7 +104,9 @@ class Learned:
             if first is not None:
                 self.take(first, source.name)
                 source.pieces = chain([first], map(self._taken, source.pieces))
-            source.filler, source.first = self.filler, self.mixture.rows
+            source.filler = self.filler
+            if source.before is None:
+                source.first, source.before, self.tail = self.rows, self.tail, None
             source.cadence = self.facts.cadence
             yield source
 
@@ -108,7 +117,27 @@ class Learned:
     def push(self, piece: Piece) -> Iterator[Rows]:
         """Rows as logged, codes or numbers and times, as the rows that `mixture` has to absorb next."""
         self.take(piece, self.facts.name)
+        self.finish()
         return cut(self.filler.fill([piece]), self.mixture.rows)
+
+    def finish(self) -> None:
+        """Absorb the tail: no forecast comes next."""
+        if self.tail is not None:
+            self.mixture.absorb(self.tail)
+            self.tail = None
+
+    def learn(self, chunks: Iterator[Rows]) -> int:
+        """Absorb what `go_on` reads, all but the tail; returns how many rows there were, the old tail too."""
+        count = 0
+        tail: list[Rows] = []
+        for rows, left in with_last(chunks):
+            count += len(rows)
+            if left < 0:
+                self.mixture.absorb(rows)
+            else:
+                tail.append(rows)
+        self.tail = joined(tail)
+        return count
 
     def take(self, piece: Piece, name: str) -> None:
         """Note rows as logged that come next. May make `mixture` anew, if they settle another cadence.
@@ -141,8 +170,8 @@ class Learned:
         self.filler = GapFiller()
         self.filler.settle(self.facts.cadence)
         self._mixture = self._blank(self.asked["models"])
-        for rows in cut(self.filler.fill([] if before is None else [before])):
-            self._mixture.absorb(rows)
+        self.tail = None
+        self.learn(cut(self.filler.fill([] if before is None else [before])))
 
     def save(self, path: str | PathLike[str]) -> None:
         """Write the state file `path`, see `seqmix.state`; the caller holds its lock. Raises OutputError."""
@@ -158,6 +187,10 @@ class Learned:
                 if self.held[1] is not None:
                     arrays["times"] = self.held[1]
         else:
+            if self.tail is not None:
+                arrays["tail"] = self.tail.codes if self.tail.values is None else self.tail.values
+                if self.tail.times is not None:
+                    arrays["tail_times"] = self.tail.times
             for name, value in self.mixture.state().items():
                 if isinstance(value, np.generic):
                     value = value.item()
@@ -168,7 +201,7 @@ class Learned:
         log = {name: getattr(self.facts, name) for name in _LOG} | {"clock": asdict(self.facts.clock)}
         header = {
             "seqmix": seqmix.__version__,
-            "rows": self.mixture.rows,
+            "rows": self.rows,
             "log": log,
             "timed": self.timed,
             "settled": self.settled,
@@ -204,19 +237,27 @@ def _restored(path: str, header: dict[str, Any], arrays: state.Arrays) -> Learne
         kept = {**header["scalars"], **{name: a if a.shape else a.item() for name, a in arrays.items()}}
         start = "mixture."
         learned.mixture.restore({name[len(start) :]: v for name, v in kept.items() if name.startswith(start)})
+        if "tail" in arrays:
+            _check_rows(arrays["tail"], arrays.get("tail_times"), log["kind"])
+            learned.tail = Rows.of(arrays["tail"], arrays.get("tail_times"), learned.mixture.rows)
     elif "held" in arrays:
         held, times = arrays["held"], arrays.get("times")
-        forms = [(held, np.float64 if log["kind"] == "numbers" else np.int32)]
-        forms += [] if times is None else [(times, np.int64)]
-        if any(array.dtype != form or array.shape != (len(held),) for array, form in forms):
-            raise ValueError("rows that are none")
+        _check_rows(held, times, log["kind"])
         learned.held = (held, times)
         learned._build(learned.held)
     if log["kind"] != "numbers" and learned.mixture.seen > len(learned.facts.alphabet):
         raise ValueError("states without a label")
-    if learned.mixture.rows != header["rows"]:
-        raise ValueError(f"{learned.mixture.rows} rows, not {header['rows']}")
+    if learned.rows != header["rows"]:
+        raise ValueError(f"{learned.rows} rows, not {header['rows']}")
     return learned
+
+
+def _check_rows(held: np.ndarray, times: np.ndarray | None, kind: str) -> None:
+    """Raises ValueError for what are no rows as logged."""
+    forms = [(held, np.float64 if kind == "numbers" else np.int32)]
+    forms += [] if times is None else [(times, np.int64)]
+    if any(array.dtype != form or array.shape != (len(held),) for array, form in forms):
+        raise ValueError("rows that are none")
 
 
 def _alphabet(kind: str, arrays: state.Arrays) -> Alphabet:

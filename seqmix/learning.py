@@ -94,16 +94,16 @@ def learn_held(
 
 
 def _learn(known: Learned, log: Any, into: str | PathLike[str], **reading: Any) -> Lesson:
-    learned = 0
+    before = 0
     with known.go_on(log, **reading) as source:
-        for rows in source.chunks():
-            known.mixture.absorb(rows)
-            learned += len(rows)
+        before = 0 if source.before is None else len(source.before)
+        learned = known.learn(source.chunks()) - before
         name = source.name
-    mixture = known.mixture
-    if not mixture.rows:
+    if not known.rows:
         raise DataError("no rows in it, so there is nothing to keep", name)
     if learned:
         known.save(into)
+    known.finish()
+    mixture = known.mixture
     leading, weight = next(iter(mixture.in_force().items()))
     return Lesson(learned, mixture.rows, mixture.bits, mixture.bits / max(mixture.present, 1), leading, weight)

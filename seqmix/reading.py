@@ -70,12 +70,14 @@ def begun(
     period: int | Sequence[int] | None,
     resolution: float | None,
     compressor_share: float | None,
+    finished: bool = False,
     **reading: Any,
 ) -> Iterator[tuple[Log | Series, Mixture | None, int | None]]:
     """A log ready to be read, the mixture that has learned the rows before it, and the time of the last of them.
 
     state: path of a state file, or what `seqmix.learned.load` made of it, which is then used up; None: there is nothing
-    before the log, and no mixture yet. Without a log, None, there is nothing after the state.
+    before the log, and no mixture yet. Without a log, None, there is nothing after the state. The last rows of a state
+    come once more, before those of the log, unless it is to be `finished`: the mixture has then learned all of them.
     """
     if state is None:
         if log is None:
@@ -87,5 +89,7 @@ def begun(
 
     learned = state if isinstance(state, Learned) else load(state)
     learned.agree(models, period, resolution, compressor_share)
+    if finished:
+        learned.finish()
     with learned.go_on(log, **reading) as following:
         yield following, learned.mixture, learned.filler.last

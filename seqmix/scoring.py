@@ -119,7 +119,7 @@ def score(
     """
     if last is None:
         last = "20%" if state is None else "all"
-    with begun(log, state, models, period, resolution, compressor_share, **reading) as (source, mixture, _):
+    with begun(log, state, models, period, resolution, compressor_share, True, **reading) as (source, mixture, _):
         run: _Run | NumberRun
         if source.kind == "numbers":
             from seqmix.number_scoring import NumberRun

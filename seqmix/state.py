@@ -23,14 +23,16 @@ The header has exactly these keys:
     timed       whether its rows have times
     settled     whether the first 4,096 rows are there, which decide the cadence
     last        time of the last row in microseconds, or null
-    asked       models, period, resolution: as they were asked for, or null
+    asked       models, period, resolution, compressor_share: as they were asked for, or null
     models      names of the models of the mixture
     scalars     name: integer, text, boolean or null, of the mixture
     arrays      list of [name, dtype, shape]; dtype is one of b1 i1 u1 u2 i4 i8 u8 f4 f8; a shape of [] is a float
 
 Arrays: `labels`, the labels of the alphabet in UTF-8, end to end, and `ends`, where each ends. While the first 4,096
 rows are not there, the rows themselves: `held` (codes, i4, or numbers, f8) and, if they have times, `times` (i8).
-From then on, with the scalars, the state of the mixture: names that start with "mixture.".
+From then on, with the scalars, the state of the mixture: names that start with "mixture."; and `tail`, perhaps with
+`tail_times`, in the same forms: the last rows, at most 64, which the mixture has not learned yet, for models that sleep
+may wake on them if a forecast comes next.
 
 A file is written beside its place, brought to the disk, and moved there: readers see the old state or the new one, and
 never wait. Writers keep each other out by a lock on a side file, `.NAME.lock`, which is removed when the writer ends.

@@ -18,12 +18,14 @@ class Log(Facts):
 
     Use it as a context manager, or `close` it.
     pieces: the rows as they are logged. filler: puts missing rows between them. first: row number of the first.
+    before: rows that were read before these and are to be learned first.
     """
 
     pieces: Iterator[Piece] = field(repr=False)
     close: Callable[[], None] = field(repr=False)
     filler: GapFiller = field(default_factory=GapFiller, repr=False)
     first: int = 0
+    before: Rows | None = field(default=None, repr=False)
     _begun: bool = field(default=False, init=False, repr=False)
 
     def chunks(self) -> Iterator[Rows]:
@@ -39,6 +41,8 @@ class Log(Facts):
 
     def _chunks(self) -> Iterator[Rows]:
         filler = self.filler
+        if self.before is not None:
+            yield self.before
         for rows in cut(filler.fill(self.pieces), self.first):
             self.cadence, self.gaps, self.filled = filler.cadence, filler.gaps, filler.filled
             yield rows

@@ -79,6 +79,17 @@ def cut(pieces: Iterable[Piece], first: int = 0) -> Iterator[Rows]:
         yield Rows.of(held, times, first)
 
 
+def joined(parts: list[Rows]) -> Rows | None:
+    """Consecutive rows as one; None of none."""
+    if len(parts) < 2:
+        return parts[0] if parts else None
+    times, values, cells = (
+        None if getattr(parts[0], name) is None else np.concatenate([getattr(part, name) for part in parts])
+        for name in ("times", "values", "cells")
+    )
+    return Rows(np.concatenate([part.codes for part in parts]), times, parts[0].first, values, cells)
+
+
 def join(pieces: list[Piece]) -> Piece:
     """Some pieces, at least one, as one."""
     if len(pieces) == 1:

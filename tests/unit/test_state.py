@@ -31,6 +31,13 @@ AWKWARD = (1, 2, 3, 7, 8, 9, 15, 16, 17, 31, 63, 64, 65, 127, 128, 129, 130, 255
 QUICK = ["memoryless", "markov"]
 
 
+def loaded(path: object) -> Learned:
+    """A state, its last rows learned too."""
+    known = load(path)
+    known.finish()
+    return known
+
+
 def equal(one: dict[str, Any], other: dict[str, Any]) -> bool:
     return one.keys() == other.keys() and all(
         np.array_equal(value, other[name], equal_nan=getattr(value, "dtype", np.dtype(float)).kind == "f")
@@ -290,7 +297,7 @@ def test_rows_pushed_one_by_one(tmp_path: Path) -> None:
                 for rows in known.push((held[row : row + 1], times[row : row + 1])):
                     known.mixture.absorb(rows)
     known.save(tmp_path / "pushed")
-    assert load(tmp_path / "pushed").mixture.bits == load(tmp_path / "whole").mixture.bits
+    assert loaded(tmp_path / "pushed").mixture.bits == loaded(tmp_path / "whole").mixture.bits
     assert (tmp_path / "pushed").read_bytes() == (tmp_path / "whole").read_bytes()
 
 
@@ -325,7 +332,7 @@ def test_a_column_is_found_again(tmp_path: Path) -> None:
     assert load(path).facts.alphabet.labels == ["fill", "cap", "label"]
     seqmix.learn(io.BytesIO(b'{"t": "2026-03-02", "v": "a"}\n'), into=tmp_path / "json")
     seqmix.learn(io.BytesIO(b'{"t": "2026-03-03"}\n{"v": "b", "t": "2026-03-04"}\n'), into=tmp_path / "json")
-    assert load(tmp_path / "json").mixture.present == 2
+    assert loaded(tmp_path / "json").mixture.present == 2
 
 
 def test_nothing_to_learn(tmp_path: Path) -> None:
@@ -346,7 +353,7 @@ def test_nothing_to_learn(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("name", ["held", "settled"])
 def test_version_1_still_reads(name: str) -> None:
-    known = load(DATA / f"state_v1_{name}.seqmix")
+    known = loaded(DATA / f"state_v1_{name}.seqmix")
     told = json.loads((DATA / "state_v1.json").read_text())[name]
     assert known.settled == (name == "settled")
     assert known.facts.alphabet.labels == told["labels"]
@@ -407,7 +414,7 @@ def forged(header: dict[str, Any], arrays: state.Arrays, path: Path) -> bytes:
 def test_a_whole_file_that_does_not_fit_is_refused(file: Path, damage: Callable[[bytes], str], tmp_path: Path) -> None:
     header, arrays = state.read(str(file))
     path = tmp_path / "forged"
-    assert load(file).mixture.rows == header["rows"]
+    assert loaded(file).mixture.rows == header["rows"]
     wrong: list[tuple[dict[str, Any], state.Arrays]] = [
         (header | {"rows": 7}, arrays),
         (header | {"settled": True}, arrays),
@@ -436,7 +443,7 @@ def test_one_writer_at_a_time(file: Path) -> None:
     with state.lock(str(file)):
         with pytest.raises(StateError, match="another seqmix is learning into it"):
             in_pieces(clocked(5), [], file)
-        assert load(file).mixture.rows  # readers do not wait
+        assert loaded(file).mixture.rows  # readers do not wait
     assert [path.name for path in file.parent.iterdir()] == [file.name]
     assert file.read_bytes() == before
 
@@ -449,6 +456,6 @@ def test_a_file_keeps_its_place_and_its_rights(tmp_path: Path) -> None:
     in_pieces(clocked(9)[7:], [], link)
     assert link.is_symlink()
     assert real.stat().st_mode & 0o777 == 0o640
-    assert load(real).mixture.present == 8
+    assert loaded(real).mixture.present == 8
     with pytest.raises(SeqmixError, match=r"cannot write .*: No such file or directory"):
         in_pieces(clocked(5), [], tmp_path / "none" / "state")
