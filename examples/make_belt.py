@@ -2,7 +2,7 @@
 
     python make_belt.py belt.txt
 
-The robot fills mixed trays for shops from a packing list of 800 cups, and starts again at its end. What is in it, for
+The robot fills mixed trays for shops from a packing list of 600 cups, and starts again at its end. What is in it, for
 models to find:
 
 - The list itself follows no rule: `plain`, `berry` and `nut` as the shops ordered them. It comes four times.
@@ -19,10 +19,10 @@ from pathlib import Path
 from random import Random
 
 SORTS = ("plain", "berry", "nut")
-LIST = 800  # cups
+LIST = 600  # cups
 ROUNDS = 4
-LOST = 0.03  # of the cups
-TWICE = 0.03
+LOST = 0.02  # of the cups
+TWICE = 0.02
 
 
 def cups(seed: int) -> list[str]:

@@ -52,3 +52,6 @@ seqmix forecast crates.csv --steps 7 --paths 3 --quiet --format table
 
 show "The tank is cleaned: which of the last eight runs does today's look like?"
 seqmix alike runs/day-*.txt --to runs/today.txt --quiet --format table
+
+show "Cups on a belt, by a packing list that slips now and then: with time to spare, a compressor finds the place best"
+seqmix weights belt.txt --compressor-share 0.9 --quiet --format table

@@ -245,7 +245,8 @@ def _restored(path: str, header: dict[str, Any], arrays: state.Arrays) -> Learne
         _check_rows(held, times, log["kind"])
         learned.held = (held, times)
         learned._build(learned.held)
-    if log["kind"] != "numbers" and learned.mixture.seen > len(learned.facts.alphabet):
+    seen = max(learned.mixture.seen, 0 if learned.tail is None else int(learned.tail.codes.max()) + 1)
+    if log["kind"] != "numbers" and seen > len(learned.facts.alphabet):
         raise ValueError("states without a label")
     if learned.rows != header["rows"]:
         raise ValueError(f"{learned.rows} rows, not {header['rows']}")

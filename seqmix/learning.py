@@ -50,8 +50,8 @@ def learn(
     """Learn a log into the state file `into`: a new one, or one that holds what was before this log.
 
     log, period, resolution, compressor_share, reading: as for `seqmix.forecast`. models: names, None for all that fit.
-    With a state that is there its own hold; kind, layout and columns are those of its first log. A log learned in any number of pieces
-    gives the same state as in one. The file changes when all is learned, or not at all.
+    With a state that is there its own hold; kind, layout and columns are those of its first log. A log learned in any
+    number of pieces gives the same state as in one. The file changes when all is learned, or not at all.
     Raises OptionError, DataError, StateError or OutputError.
     """
     with held(into) as known:

@@ -164,6 +164,7 @@ class Reader(Setting):
         if self._text is None:
             self._read()
         assert self._text is not None
+        self.spent += _ROW  # whether or not there is something to compress
         known = len(self.counts)
         bits = 0.0
         if known:
@@ -223,7 +224,7 @@ class Reader(Setting):
         ends = [text[-window * self._letter :] + letter for window in self.windows for letter in letters]
         lengths = np.array(self._compressor.code_length(self._history, ends), dtype=np.float64)
         self.calls += len(ends)
-        self.spent += _ROW + len(ends) * self._compressor.cost
+        self.spent += len(ends) * self._compressor.cost
         if len(lengths) != len(ends) or not np.isfinite(lengths).all():
             raise ValueError("code lengths are finite, one a candidate")
         lengths = lengths.reshape(len(self.windows), len(some)).T / 8.0

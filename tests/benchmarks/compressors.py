@@ -21,6 +21,8 @@ import seqmix
 from seqmix.models import registry
 from seqmix.models.compressed import Compressed
 
+EXAMPLES = Path(__file__).parents[2] / "examples"
+
 
 def alone() -> None:
     """Every compressor model by itself, always awake, on noisy repeats, beside the other models."""
@@ -68,6 +70,7 @@ def logs() -> Iterator[tuple[str, seqmix.Series]]:
     }
     for name, codes in states.items():
         yield name, seqmix.Series.of([f"s{code}" for code in codes.tolist()])
+    yield "packing list that slips", seqmix.read(EXAMPLES / "belt.txt")
     text = (DATA / "alice29.txt").read_bytes()
     yield "alice29, 600 bytes", seqmix.Series.of(text[1000:1600], kind="bytes")
     yield "births", seqmix.read(DATA / "us_births_1969_1988.csv", column="births")

@@ -34,6 +34,7 @@ SAMPLES = {
     "alarms.txt": ("make_line.py", "--codes"),
     "tank.csv": ("make_tank.py",),
     "crates.csv": ("make_tank.py", "--crates"),
+    "belt.txt": ("make_belt.py",),
     **{f"runs/day-{day}.txt": ("make_runs.py", "--day", str(day)) for day in range(1, 9)},
     "runs/today.txt": ("make_runs.py", "--day", "9"),
 }
