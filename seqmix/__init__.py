@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
+    from seqmix.surprising import Surprise, surprise
     from seqmix.weighing import Weights, weights
 
 _HOME = {
@@ -35,6 +36,7 @@ _HOME = {
     "Score": "seqmix.scoring",
     "SeqmixError": "seqmix.errors",
     "Series": "seqmix.series",
+    "Surprise": "seqmix.surprising",
     "Weights": "seqmix.weighing",
     "alike": "seqmix.likeness",
     "describe": "seqmix.describing",
@@ -43,6 +45,7 @@ _HOME = {
     "open_log": "seqmix.series",
     "read": "seqmix.series",
     "score": "seqmix.scoring",
+    "surprise": "seqmix.surprising",
     "weights": "seqmix.weighing",
 }
 
@@ -56,6 +59,7 @@ __all__ = [
     "Score",
     "SeqmixError",
     "Series",
+    "Surprise",
     "Weights",
     "__version__",
     "alike",
@@ -65,6 +69,7 @@ __all__ = [
     "open_log",
     "read",
     "score",
+    "surprise",
     "weights",
 ]
 

@@ -36,10 +36,11 @@ class Improbable:
 
 def of_state(masses: Floats, code: int) -> Improbable:
     """masses (k,): of every state, and of an unseen one; code: of the one that came."""
-    some = masses[masses > 0]
-    levels = np.cumsum(np.sort(some))
-    p = min(float(masses[masses <= masses[code] * _SAME].sum()), 1.0)
-    return Improbable(p, max(float(-(some * np.log2(some)).sum()), 0.0), levels, np.ones(len(levels), dtype=bool))
+    some = np.sort(masses[masses > 0])
+    levels = np.cumsum(some)  # one after the other: states that cannot come change no bit
+    p = min(float(levels[np.searchsorted(some, masses[code] * _SAME, side="right") - 1]), 1.0)
+    expected = float(np.cumsum(-some * np.log2(some))[-1])
+    return Improbable(p, max(expected, 0.0), levels, np.ones(len(levels), dtype=bool))
 
 
 def of_number(law: NumberLaw, value: float, width: float) -> Improbable:

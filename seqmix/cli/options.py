@@ -106,7 +106,7 @@ class Source:
 
     @contextmanager
     def _opened(self, path: str | None, notes: bool, **more: Any) -> Iterator[Log]:
-        place = _stdin() if path is None else path
+        place = place_of(path)
 
         from seqmix.series import open_log
 
@@ -124,8 +124,10 @@ class Source:
                     say(note)
 
 
-def _stdin() -> str:
-    """Standard input, as open_log calls it; a terminal would seem to hang, so it must be asked for as "-"."""
+def place_of(path: str | None) -> str:
+    """A path, or standard input as open_log calls it; a terminal would seem to hang, so it must be asked for as "-"."""
+    if path is not None:
+        return path
     if sys.stdin is None or sys.stdin.isatty():
         raise click.UsageError("no log to read: name a file, or pipe rows in", click.get_current_context())
     return "-"

@@ -58,6 +58,7 @@ class Mixture(Kept):
         self.model_bits = np.zeros(len(self.models))  # a sleeping model is charged what the mixture lost
         self.awake = np.zeros(len(self.models), dtype=np.int64)  # rows with a value that each model predicted itself
         self.asleep = np.zeros(len(self.models), dtype=bool)  # at the last row
+        self.latest_weights: Floats = np.zeros((1, len(self.models)))  # of the laws given last, (laws, models)
 
     def _context(self, timed: bool) -> Context:
         return Context(timed=timed)
@@ -118,6 +119,7 @@ class Mixture(Kept):
         bits[rows.codes < 0] = 0.0
         self._check(bits, rows)
         if ask is not None:
+            self.latest_weights = before
             ask.laws[:] = added_up(before, [part.laws for part in asks if part is not None])
         self.rows += len(rows)
         self.present += int((rows.codes >= 0).sum())
@@ -161,6 +163,7 @@ class Mixture(Kept):
         """Law of the next row, at `time` (microseconds) where the log has times."""
         every = [model.predict(time) for model in self.models]
         weights = self.weights.of(np.array([law is not None for law in every]))
+        self.latest_weights = weights[None, :]
         whole = np.zeros((len(every), max(len(law.masses) for law in every if law is not None) + 1))
         for line, law in zip(whole, every, strict=True):
             if law is not None:

@@ -94,6 +94,12 @@ class NumberMixture(Mixture):
         self._charge(bits, losses + events[:, None])
         return bits
 
+    def latest_cell(self) -> tuple[float, float]:
+        """Value and width of the cell of the last row absorbed, in the unit of the log."""
+        assert self.latest is not None and self.latest.values is not None and self.latest.cells is not None
+        factor = self.factor or 1.0
+        return float(self.latest.values[-1]) / factor, float(self.latest.cells[-1]) / factor
+
     def _choose_unit(self, values: Floats) -> None:
         """Numbers of a size far from 1 go to the models times a power of two, fixed by the first that is not 0."""
         if self.factor == 0.0:
@@ -118,8 +124,10 @@ class NumberMixture(Mixture):
 
     def _mixed(self, laws: Sequence[NumberLaw | None]) -> NumberLaw:
         if all(law is None for law in laws):
+            self.latest_weights = self.weights.now()[None, :]
             return FIRST
         weights = self.weights.of(np.array([law is not None for law in laws]))
+        self.latest_weights = weights[None, :]
         awake = [(weight, law) for weight, law in zip(weights, laws, strict=True) if law is not None]
         return NumberLaw.combine([weight for weight, _ in awake], [law for _, law in awake])
 

@@ -46,6 +46,12 @@ class Alphabet:
             self.labels.append(label)
         return code
 
+    def forget(self, size: int) -> None:
+        """Keep the first `size` labels only: those after them were read and then refused."""
+        for label in self.labels[size:]:
+            del self._codes[label]
+        del self.labels[size:]
+
 
 class Codes(dict[str, int]):
     """The code of every cell text met so far: a look-up that learns, so that each text is examined once.
