@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
+    from seqmix.shifting import Shifts, shifts
     from seqmix.weighing import Weights, weights
 
 _HOME = {
@@ -33,6 +34,7 @@ _HOME = {
     "Score": "seqmix.scoring",
     "SeqmixError": "seqmix.errors",
     "Series": "seqmix.series",
+    "Shifts": "seqmix.shifting",
     "Weights": "seqmix.weighing",
     "alike": "seqmix.likeness",
     "describe": "seqmix.describing",
@@ -40,6 +42,7 @@ _HOME = {
     "open_log": "seqmix.series",
     "read": "seqmix.series",
     "score": "seqmix.scoring",
+    "shifts": "seqmix.shifting",
     "weights": "seqmix.weighing",
 }
 
@@ -52,6 +55,7 @@ __all__ = [
     "Score",
     "SeqmixError",
     "Series",
+    "Shifts",
     "Weights",
     "__version__",
     "alike",
@@ -60,6 +64,7 @@ __all__ = [
     "open_log",
     "read",
     "score",
+    "shifts",
     "weights",
 ]
 

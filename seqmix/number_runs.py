@@ -22,17 +22,14 @@ SHARES = (0.0, 1.0, 0.5, 0.8, 0.95)
 PACES = (0.1, 0.3)
 """Paces of means of the rows so far, new ones counting more, that a row may go on from instead."""
 
-COSTS = np.array([0.0, 3.0, 8.0, 8.0, 8.0, 8.0, 8.0])
+COSTS = np.array([0.0, 4.0, 8.0, 8.0, 8.0, 8.0, 8.0])
 """Prior cost of each share and pace in bits. All but the first two can take a shift of level for a slow return."""
-
-LOG_COST = 1.0
-"""Prior cost of the logarithm, on top."""
-
-PERIOD_COST = 1.0
-"""Prior cost of a period, on top."""
 
 LONGEST = 1500
 """Rows of the longest period looked at; of those that fit, the two longest are."""
+
+TAILS = 3.0
+"""Degrees of freedom of heavy tails."""
 
 PERIODS = 3
 """Periods that teach a profile before it is used; all runs begin anew when it is."""
@@ -54,6 +51,7 @@ FAR = 4.0
 
 _MEMORY = 20  # periods that a profile remembers
 _LN2 = log(2.0)
+_HEAVY_RATIO = lgamma((TAILS + 1.0) / 2.0) - lgamma(TAILS / 2.0)
 
 
 class NumberWays:
@@ -62,16 +60,12 @@ class NumberWays:
     def __init__(self, periods: tuple[int, ...] = ()) -> None:
         self._profiles = [Profile(period) for period in sorted(periods)[-2:] if period <= LONGEST]
         self._bases = 1 + len(self._profiles)
-        explanations = 2 * self._bases * len(COSTS)
-        half = explanations // 2
-        self._log = slice(half, None)
-        self._plain = slice(0, half)
+        part = self._bases * len(COSTS)
+        explanations = 3 * part
+        self._plain, self._log, self._heavy = (slice(part * i, part * (i + 1)) for i in range(3))
         self._positive = True
-        costs = np.tile(COSTS, (2, self._bases, 1))
-        costs[1] += LOG_COST
-        costs[:, 1:] += PERIOD_COST
-        prior = np.exp2(-costs.reshape(-1))
-        self.prior = prior / prior.sum()
+        self._shifts = 0
+        self._set_prior()
         self._last: Floats | None = None  # the bases of the last row
         self._seen: list[Floats] = []
         self._target = np.zeros(explanations)
@@ -84,6 +78,11 @@ class NumberWays:
         self._mean = np.zeros(shape)
         self._rest = np.zeros(shape)  # b of the gamma law: half the sum of squares about the mean
         self._total = np.zeros((MOST, 2))  # rows of a run, and their sum
+
+    def _set_prior(self) -> None:
+        # a log that shifts again and again is one that wanders: what explains that costs less each time
+        prior = np.exp2(-np.tile(COSTS / (1.0 + self._shifts), 3 * self._bases))
+        self.prior = prior / prior.sum()
 
     def _look(self, value: float) -> None:
         """Work out what each explanation has to explain of this row."""
@@ -98,9 +97,10 @@ class NumberWays:
             self._last = bases
             self._means = np.tile(bases[:, None], len(PACES))
         before = np.concatenate([self._last[:, None] * SHARES, self._means], axis=1)
-        self._target = (bases[:, None] - before).reshape(-1)
+        target = (bases[:, None] - before).reshape(-1)
+        self._target = np.concatenate([target, target[self._plain]])
         self._means += (bases[:, None] - self._means) * PACES
-        self._floor[self._plain] = self.cell**2 / 12.0
+        self._floor[:] = self.cell**2 / 12.0
         self._floor[self._log] = (self.cell / value) ** 2 / 12.0 if self._positive else 1.0
         self._last = bases
         self._value = value
@@ -139,9 +139,14 @@ class NumberWays:
     def losses(self, value: float, runs: int) -> Floats:
         self._look(value)
         rows, shape = self._rows_and_shape(runs)
-        spread = 2.0 * self._rest[:runs] * (rows + 1.0) / rows  # squared scale times twice the shape
+        scale = self._rest[:runs] * (rows + 1.0) / (rows * shape)  # squared
+        half = np.broadcast_to(shape, scale.shape).copy()  # of the degrees of freedom
+        half[:, self._heavy] = TAILS / 2.0
+        ratio = np.broadcast_to(self._ratio[:runs, None], scale.shape).copy()
+        ratio[:, self._heavy] = _HEAVY_RATIO
+        spread = 2.0 * half * scale
         off = self._target - self._mean[:runs]
-        logs = self._ratio[:runs, None] - 0.5 * np.log(pi * spread) - (shape + 0.5) * np.log1p(off * off / spread)
+        logs = ratio - 0.5 * np.log(pi * spread) - (half + 0.5) * np.log1p(off * off / spread)
         broad = self._broad
         wide = 4.0 * self._rest[broad] / (SHAPE + self._count[broad] / 2.0)
         outlier = 1.0 / (pi * np.sqrt(wide) * (1.0 + (self._target - self._mean[broad]) ** 2 / wide))
@@ -159,9 +164,17 @@ class NumberWays:
     def learn(self, runs: int) -> None:
         rows, shape = self._rows_and_shape(runs)
         scale = np.sqrt(self._rest[:runs] * (rows + 1.0) / (rows * shape))
-        off = np.clip(self._target - self._mean[:runs], -FAR * scale, FAR * scale)
+        off = (self._target - self._mean[:runs]) / scale
+        far = off[:, self._heavy]
+        less = (TAILS + 1.0) / (TAILS + far * far)  # a step of EM for a Student t law: outliers count for less
+        np.clip(off, -FAR, FAR, out=off)
+        square = off * off
+        square[:, self._heavy] = less * far * far
+        off[:, self._heavy] = less * far
+        off *= scale
+        square *= scale * scale
         self._mean[:runs] += off / (rows + 1.0)
-        self._rest[:runs] += 0.5 * (off * off * rows / (rows + 1.0) + self._floor)
+        self._rest[:runs] += 0.5 * (square * rows / (rows + 1.0) + self._floor)
         self._ratio[:runs] = np.log(shape[:, 0]) - self._ratio[:runs]
         self._count[:runs] += 1.0
         self._total[:runs] += 1.0, self._value
@@ -169,6 +182,8 @@ class NumberWays:
     def keep(self, which: npt.NDArray[np.intp]) -> None:
         for kept in (self._count, self._ratio, self._mean, self._rest, self._total):
             kept[: len(which)] = kept[which]
+        self._shifts += 1
+        self._set_prior()
 
     def level(self, run: int) -> float:
         return float(self._total[run, 1] / self._total[run, 0])
@@ -181,8 +196,6 @@ class Profile:
         self.period = period
         self.awake = False
         self._window = np.full((period, 2), np.nan)
-        self._sums = np.zeros(2)
-        self._held = 0
         self._means = np.zeros((period, 2))
         self._counts = np.zeros(period)
 

@@ -114,6 +114,10 @@ class Runs:
         self.odds = float(np.exp2(np.minimum(gains, 1000.0)).sum()) / max(self._candidates, 1)
         return self._shift(best, row, float(gains[best])) if self.odds >= self.threshold else None
 
+    def starts(self) -> set[int]:
+        """Row numbers at which the runs kept began."""
+        return set(self._rows[: self._runs].tolist())
+
     def _gains(self) -> Floats:
         runs, running = self._runs, self._running
         return self._bits[running] - self._before[:runs, running] - self._bits[:runs]

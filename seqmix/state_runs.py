@@ -19,8 +19,8 @@ CONTEXTS = 64
 KNOWN = 4096
 """States told apart; the later ones count as one."""
 
-PRIOR_COUNTS = (0.5, 8.0)
-"""Of each state, where a run starts from nothing: Krichevsky & Trofimov 1981; and nearly even odds."""
+PRIOR_COUNTS = (0.5, 8.0, 1e9)
+"""Of each state, where a run starts from nothing: Krichevsky & Trofimov 1981; more even odds; and even ones."""
 
 STRENGTH = 2.0
 """Rows, all told, that the odds before count for where a run starts from these."""

@@ -13,7 +13,7 @@ import seqmix
 from seqmix.cli.notes import say
 from seqmix.cli.options import Helpful
 
-NAMES = ("forecast", "score", "weights", "alike", "describe", "models", "completion")
+NAMES = ("forecast", "score", "weights", "shifts", "alike", "describe", "models", "completion")
 COMPLETE = "_SEQMIX_COMPLETE"  # how the completion script of a shell asks for words
 
 
