@@ -12,7 +12,7 @@ from math import lgamma, log, pi
 import numpy as np
 import numpy.typing as npt
 
-from seqmix.runs import MOST
+from seqmix.runs import BORNE_OUT, MOST
 
 Floats = npt.NDArray[np.float64]
 
@@ -58,7 +58,8 @@ class NumberWays:
     """The explanations of numbers; periods in rows. `cell` of a row is its width on the grid, and the least spread."""
 
     def __init__(self, periods: tuple[int, ...] = ()) -> None:
-        self._profiles = [Profile(period) for period in sorted(periods)[-2:] if period <= LONGEST]
+        self._profiles = [Profile(period) for period in sorted(p for p in periods if p <= LONGEST)[-2:]]
+        self.borne_out = max([BORNE_OUT, *(profile.period for profile in self._profiles[:1])])
         self._bases = 1 + len(self._profiles)
         part = self._bases * len(COSTS)
         explanations = 3 * part

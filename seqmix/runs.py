@@ -20,7 +20,7 @@ RECENT = 40
 """Starts so many rows old, or less, are never dropped."""
 
 BORNE_OUT = 5
-"""Rows that a fresh run has predicted, at least, before it counts: a shift of fewer rows is an exception."""
+"""Rows that a fresh run has predicted, at least, before it counts, or a period: what is over sooner is an exception."""
 
 _LEAST = 1e-60  # weight of an explanation within a run: what was ruled out can come back
 
@@ -29,6 +29,7 @@ class Ways(Protocol):
     """The explanations of one kind of log: what each of `MOST` runs has learned, an entry a run."""
 
     prior: Floats  # of each explanation within a run
+    borne_out: int  # rows that a fresh run has predicted, at least, before it counts
 
     def begin(self, run: int, running: int) -> None:
         """Start run `run` afresh, its prior from what `running` has learned; equal numbers: from the first rows."""
@@ -107,7 +108,7 @@ class Runs:
         self._weights[:runs] = np.maximum(weights / sums[:, None], _LEAST)
         self._age[:runs] += 1
         self.ways.learn(runs)
-        gains = np.where(self._age[:runs] >= BORNE_OUT, self._gains(), -np.inf)
+        gains = np.where(self._age[:runs] >= self.ways.borne_out, self._gains(), -np.inf)
         gains[self._running] = -np.inf
         best = int(gains.argmax())
         # a log of bits that no float can hold is a shift all the same

@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from seqmix.runs import MOST
+from seqmix.runs import BORNE_OUT, MOST
 
 Floats = npt.NDArray[np.float64]
 
@@ -39,6 +39,7 @@ class StateWays:
     def __init__(self, states: int = 0) -> None:
         """states: how many there are, where that is known beforehand."""
         self.prior = np.full(2 * STARTS, 0.5 / STARTS)
+        self.borne_out = BORNE_OUT
         self._states = 0
         self._fixed = states > 0
         self._last = 0
