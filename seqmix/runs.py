@@ -108,12 +108,14 @@ class Runs:
         self._weights[:runs] = np.maximum(weights / sums[:, None], _LEAST)
         self._age[:runs] += 1
         self.ways.learn(runs)
-        gains = np.where(self._age[:runs] >= self.ways.borne_out, self._gains(), -np.inf)
+        gains = self._gains()
         gains[self._running] = -np.inf
         best = int(gains.argmax())
+        borne_out = self._age[:runs] >= self.ways.borne_out
         # a log of bits that no float can hold is a shift all the same
-        self.odds = float(np.exp2(np.minimum(gains, 1000.0)).sum()) / max(self._candidates, 1)
-        return self._shift(best, row, float(gains[best])) if self.odds >= self.threshold else None
+        self.odds = float(np.exp2(np.minimum(gains[borne_out], 1000.0)).sum()) / max(self._candidates, 1)
+        settled = borne_out[best] and self.odds >= self.threshold
+        return self._shift(best, row, float(gains[best])) if settled else None
 
     def starts(self) -> set[int]:
         """Row numbers at which the runs kept began."""

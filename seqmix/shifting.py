@@ -101,9 +101,7 @@ def shifts(
         return Shifts(found, rows_read, search.runs.odds if search else 0.0)
 
 
-def _shift(
-    found: Found, start: int | None, known: int | None, leaders: _Leaders, text: Callable[[int], str]
-) -> Shift:
+def _shift(found: Found, start: int | None, known: int | None, leaders: _Leaders, text: Callable[[int], str]) -> Shift:
     return Shift(
         row=found.start + 1,
         time=None if start is None else text(start),
@@ -147,9 +145,9 @@ class _Search:
             assert rows.values is not None
             values = self._grid.snap(np.where(np.abs(rows.values) < TINY, 0.0, rows.values))
             widths, _ = self._grid.cells(values)
-            self._choose_unit(values)
-            with np.errstate(over="ignore", invalid="ignore"):
-                values, widths = values * self._factor, widths * self._factor
+            factors = self._factors(values)
+            with np.errstate(over="ignore", under="ignore", invalid="ignore"):
+                values, widths = values * factors, np.clip(widths * factors, 1 / HUGE, HUGE)
                 there = np.abs(values) <= HUGE
         for place in np.flatnonzero(there).tolist():
             row = rows.first + place
@@ -163,16 +161,22 @@ class _Search:
         kept = self.runs.starts()
         self._times = {row: time for row, time in self._times.items() if row in kept}
 
-    def _choose_unit(self, values: np.ndarray) -> None:
+    def _factors(self, values: np.ndarray) -> np.ndarray:
+        """What each value is multiplied by: a power of two, fixed by the first value that is not 0."""
+        factors = np.ones(len(values))
+        sized = np.flatnonzero((values != 0) & ~np.isnan(values))
+        first = 0
         if self._factor == 0.0:
-            sized = values[(values != 0) & ~np.isnan(values)]
+            first = int(sized[0]) if len(sized) else len(values)
             if len(sized):
-                self._factor = 2.0 ** int(np.clip(-np.frexp(sized[0])[1], -1000, 1000))
+                self._factor = 2.0 ** int(np.clip(-np.frexp(values[first])[1], -1000, 1000))
+        factors[first:] = self._factor
+        return factors
 
     def _in_unit(self, found: Found) -> Found:
         if found.level_before is None or found.level_after is None:
             return found
-        before, after = (level / self._factor for level in (found.level_before, found.level_after))
+        before, after = (level / (self._factor or 1.0) for level in (found.level_before, found.level_after))
         return Found(found.start, found.known, found.evidence_bits, found.odds, before, after)
 
 

@@ -70,7 +70,9 @@ class StateWays:
     def begin(self, run: int, running: int) -> None:
         for counts in (self._odds, self._after):
             counts[run] = _PRIOR
-            if run != running and counts.size:
+            if run == running:
+                counts[run, -1] = STRENGTH / max(self._states, 1)
+            elif counts.size:
                 before = counts[running, 0]
                 counts[run, -1] = STRENGTH * before / before.sum(axis=1, keepdims=True)
 

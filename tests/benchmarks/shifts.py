@@ -12,9 +12,11 @@ from processes import table
 from scipy.signal import lfilter
 
 import seqmix
+from seqmix.shifting import Shift
 
 ROWS, SEEDS = 2000, 10
 START, AFTER = 500, 500  # of a shift, and rows after it
+LATER = np.arange(START + AFTER) >= START
 Rng = np.random.Generator
 
 
@@ -49,15 +51,15 @@ STEADY: dict[str, Callable[[Rng], object]] = {
 }
 
 SHIFTING: dict[str, Callable[[Rng], object]] = {
-    "level by 2 spreads": lambda rng: rng.normal(size=START + AFTER) + 2.0 * (np.arange(START + AFTER) >= START),
-    "level by 1 spread": lambda rng: rng.normal(size=START + AFTER) + 1.0 * (np.arange(START + AFTER) >= START),
-    "variance times 3": lambda rng: rng.normal(size=START + AFTER) * np.where(np.arange(START + AFTER) < START, 1, 3**0.5),
-    "variance times 1/3": lambda rng: rng.normal(size=START + AFTER) / np.where(np.arange(START + AFTER) < START, 1, 3**0.5),
+    "level by 2 spreads": lambda rng: rng.normal(size=START + AFTER) + 2.0 * LATER,
+    "level by 1 spread": lambda rng: rng.normal(size=START + AFTER) + 1.0 * LATER,
+    "variance times 3": lambda rng: rng.normal(size=START + AFTER) * np.where(LATER, 3**0.5, 1),
+    "variance times 1/3": lambda rng: rng.normal(size=START + AFTER) / np.where(LATER, 3**0.5, 1),
     "level by 2, on a week (--period 7)": lambda rng: (
-        season(rng, START + AFTER) + rng.normal(size=START + AFTER) + 2.0 * (np.arange(START + AFTER) >= START)
+        season(rng, START + AFTER) + rng.normal(size=START + AFTER) + 2.0 * LATER
     ),
     "a week appears (--period 7)": lambda rng: (
-        season(rng, START + AFTER) * (np.arange(START + AFTER) >= START) + rng.normal(size=START + AFTER)
+        season(rng, START + AFTER) * LATER + rng.normal(size=START + AFTER)
     ),
     "new odds of states, order 1": lambda rng: (
         chain(rng, transitions(rng), START) + chain(rng, transitions(rng), AFTER)
@@ -65,9 +67,11 @@ SHIFTING: dict[str, Callable[[Rng], object]] = {
 }  # fmt: skip
 
 
-def found(name: str, log: object) -> list[seqmix.shifting.Shift]:  # type: ignore[name-defined]
+def found(name: str, log: object) -> list[Shift]:
     period = 7 if "--period 7" in name else None
-    return list(seqmix.shifts(log, period=period, models=["memoryless"] if isinstance(log, list | bytes) else ["trend"]).shifts)
+    return list(
+        seqmix.shifts(log, period=period, models=["memoryless"] if isinstance(log, list | bytes) else ["trend"]).shifts
+    )
 
 
 def measure() -> None:
@@ -89,7 +93,9 @@ def measure() -> None:
                 delays.append(late[0].known_row - START)
                 off.append(abs(late[0].row - START - 1))
         median = [f"{np.median(part):.0f}" if part else "" for part in (delays, off)]
-        lines.append([name, f"{len(delays)} of {SEEDS}", median[0], str(max(delays, default="")), median[1], str(false)])
+        lines.append(
+            [name, f"{len(delays)} of {SEEDS}", median[0], str(max(delays, default="")), median[1], str(false)]
+        )
     table(
         [f"a shift after {START} rows", "found", "rows until known, median", "largest", "start off by, rows, median",
          "other shifts"],
