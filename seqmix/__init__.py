@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
     from seqmix.surprising import Surprise, surprise
+    from seqmix.shifting import Shifts, shifts
     from seqmix.weighing import Weights, weights
 
 _HOME = {
@@ -37,6 +38,7 @@ _HOME = {
     "SeqmixError": "seqmix.errors",
     "Series": "seqmix.series",
     "Surprise": "seqmix.surprising",
+    "Shifts": "seqmix.shifting",
     "Weights": "seqmix.weighing",
     "alike": "seqmix.likeness",
     "describe": "seqmix.describing",
@@ -46,6 +48,7 @@ _HOME = {
     "read": "seqmix.series",
     "score": "seqmix.scoring",
     "surprise": "seqmix.surprising",
+    "shifts": "seqmix.shifting",
     "weights": "seqmix.weighing",
 }
 
@@ -60,6 +63,7 @@ __all__ = [
     "SeqmixError",
     "Series",
     "Surprise",
+    "Shifts",
     "Weights",
     "__version__",
     "alike",
@@ -70,6 +74,7 @@ __all__ = [
     "read",
     "score",
     "surprise",
+    "shifts",
     "weights",
 ]
 

@@ -23,9 +23,9 @@ _AT_ONCE = 64  # lines handed over together
 class Arrivals:
     """Whole lines, handed over as soon as they are there; a part of a line waits for its rest.
 
-    A signal that asks to end is noted in `stopped`, its number, and ends the lines: work at hand is not torn. ended: no line
-    comes after those handed over last. A file is followed under its name: where another takes its place, or it gets
-    shorter, it is read from the start.
+    A signal that asks to end is noted in `stopped`, its number, and ends the lines: work at hand is not torn. ended: no
+    line comes after those handed over last. A file is followed under its name: where another takes its place, or it
+    gets shorter, it is read from the start.
     """
 
     def __init__(self, place: str, from_end: bool = False) -> None:

@@ -13,7 +13,9 @@ import seqmix
 from seqmix.cli.notes import say
 from seqmix.cli.options import Helpful
 
-NAMES = ("forecast", "score", "weights", "follow", "surprise", "learn", "alike", "describe", "models", "completion")
+NAMES = (
+    "forecast", "score", "weights", "follow", "surprise", "shifts", "learn", "alike", "describe", "models", "completion"
+)  # fmt: skip
 COMPLETE = "_SEQMIX_COMPLETE"  # how the completion script of a shell asks for words
 
 

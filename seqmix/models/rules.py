@@ -139,10 +139,11 @@ class Rules(NumbersModel):
 
     def _weighed(self) -> dict[int, float]:
         """Weights of the rules that are awake."""
-        weights = self._weights.now()
-        some = {rule: float(weights[rule]) for rule in self._grid.spoken()}
-        whole = sum(some.values())
-        return {rule: weight / whole for rule, weight in some.items()}
+        spoken = list(self._grid.spoken())
+        if not spoken:
+            return {}
+        weights = self._weights.of(np.isin(np.arange(len(_RULES)), spoken))
+        return {rule: float(weights[rule]) for rule in spoken}
 
     def _leading(self) -> int | None:
         weighed = self._weighed()
