@@ -23,8 +23,8 @@ if TYPE_CHECKING:
     from seqmix.mixture.mixture import Mixture
     from seqmix.scoring import Score, score
     from seqmix.series import Log, Series, open_log, read
-    from seqmix.surprising import Surprise, surprise
     from seqmix.shifting import Shifts, shifts
+    from seqmix.surprising import Surprise, surprise
     from seqmix.weighing import Weights, weights
 
 _HOME = {
@@ -62,8 +62,8 @@ __all__ = [
     "Score",
     "SeqmixError",
     "Series",
-    "Surprise",
     "Shifts",
+    "Surprise",
     "Weights",
     "__version__",
     "alike",
@@ -73,8 +73,8 @@ __all__ = [
     "open_log",
     "read",
     "score",
-    "surprise",
     "shifts",
+    "surprise",
     "weights",
 ]
 
