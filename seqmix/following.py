@@ -11,12 +11,12 @@ import numpy as np
 from seqmix.errors import DataError, SeqmixError, visible
 from seqmix.improbable import Alarms, Improbable, of_number
 from seqmix.learned import Learned, facts_of
-from seqmix.mixture.numbers import NumberMixture
+from seqmix.mixture.numbers import LIGHT, NumberMixture
 from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask
 from seqmix.series import Rows, open_log
 from seqmix.series.rows import Piece, join, joined
-from seqmix.surprising import LIGHT, RATE, of_law, rate_of
+from seqmix.surprising import RATE, of_law, rate_of
 
 LEVELS = (0.1, 0.9)
 """Quantiles of a number that are told, beside the median."""
@@ -210,7 +210,10 @@ class Follower:
                 self._law = mixture.predict(time)
             law = self._law
             bits = float(mixture.absorb(rows[t : t + 1])[0])
-            found = of_number(law.lighter(LIGHT), *mixture.latest_cell()) if there and law is not None else None
+            found = None
+            if there and law is not None:
+                median = self._told[0]["median"] if self._told and time == self._due else law.median
+                found = of_number(law, *mixture.latest_cell(), median)
             answer = self._answer(rows, t, value if there else None, bits, found)
             cadence = self._known.facts.cadence or 0
             heavy = self._foretell(None if time is None else time + cadence)
@@ -252,7 +255,7 @@ class Follower:
         if isinstance(mixture, NumberMixture):
             self._law = mixture.predict(time)
             weights = mixture.latest_weights[-1]
-            laws = [self._law]
+            laws = [self._law.lighter(LIGHT)]
             if self._steps > 1:
                 laws = mixture.walk(self._steps, self._times(time))
             self._told = [self._of_number(law) for law in laws]

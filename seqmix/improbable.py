@@ -16,6 +16,7 @@ _COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the 
 _SMALL = 0.02  # p-values from which on the coarse stretches will do
 _REACH = 1e3  # spreads to either side
 _MOST = 1e13  # cells
+_LIGHT = 1e-7  # weight of the parts of a law that are left out
 _SAME = 1 + 1e-9  # masses that differ by rounding are alike
 
 
@@ -43,9 +44,10 @@ def of_state(masses: Floats, code: int) -> Improbable:
     return Improbable(p, max(expected, 0.0), levels, np.ones(len(levels), dtype=bool))
 
 
-def of_number(law: NumberLaw, value: float, width: float) -> Improbable:
+def of_number(law: NumberLaw, value: float, width: float, median: float) -> Improbable:
     """Of a value on a grid of `width`: cells around it and around the median one by one, further out in stretches."""
-    middle = float(np.clip(np.rint((law.median - value) / width), -_MOST, _MOST))
+    law = law.lighter(_LIGHT).eased()
+    middle = float(np.clip(np.rint((median - value) / width), -_MOST, _MOST))
     reach = float(np.clip(_REACH * law.spread / width + abs(middle), 16.0, _MOST))
     found = _at(law, value, width, middle, reach, _COARSE)
     return found if found.p_value > _SMALL else _at(law, value, width, middle, reach, _FINE)

@@ -12,7 +12,7 @@ import numpy as np
 from seqmix.errors import OptionError, visible
 from seqmix.improbable import Alarms, Improbable, of_number, of_state
 from seqmix.mixture.mixture import Mixture
-from seqmix.mixture.numbers import NumberMixture
+from seqmix.mixture.numbers import LIGHT, NumberMixture
 from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask, Model
 from seqmix.reading import begun, mixture_for
@@ -23,9 +23,6 @@ RATE = "1/10000rows"
 
 JOINED = 5
 """Rows after a surprising one in which another belongs to the same event."""
-
-LIGHT = 1e-7
-"""Weight of the parts of a law of a number that are left out."""
 
 _AT_ONCE = 512  # rows whose laws are asked for together
 _SECONDS = {"hour": 3600, "day": 86400, "week": 604800}
@@ -191,10 +188,10 @@ class Watch:
         for t, value in enumerate(rows.values.tolist()):
             law: NumberLaw | None = None
             if value == value:
-                law = self._mixture.predict(None if rows.times is None else int(rows.times[t])).lighter(LIGHT)
+                law = self._mixture.predict(None if rows.times is None else int(rows.times[t]))
             bits = float(self._mixture.absorb(rows[t : t + 1])[0])
             if law is not None:
-                yield t, bits, of_number(law, *self._mixture.latest_cell())
+                yield t, bits, of_number(law, *self._mixture.latest_cell(), law.lighter(LIGHT).median)
 
 
 def of_law(law: np.ndarray, code: int, new: bool) -> Improbable:

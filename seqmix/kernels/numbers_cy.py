@@ -15,12 +15,13 @@ except ModuleNotFoundError:
     from seqmix.kernels import shim as cython
 
 if cython.compiled:
-    from cython.cimports.libc.math import atan2, exp, fabs, log, log1p, sqrt
+    from cython.cimports.libc.math import atan2, erfc, exp, fabs, log, log1p, sqrt
 else:
-    from math import atan2, exp, fabs, log, log1p, sqrt
+    from math import atan2, erfc, exp, fabs, log, log1p, sqrt
 
 PI = cython.declare(cython.double, 3.141592653589793)
 LN2 = cython.declare(cython.double, 0.6931471805599453)
+SQRT_HALF = cython.declare(cython.double, 0.7071067811865476)
 LOG_SQRT_2PI = cython.declare(cython.double, 0.9189385332046727)
 EVEN = cython.declare(cython.double, 0.2)  # widths, in scales, up to which density times width will do: even grid
 UNEVEN = cython.declare(cython.double, 0.01)  # and with its second-order term on an uneven one
@@ -107,24 +108,8 @@ def _student_tail(z: cython.double, df: cython.double, norm: cython.double) -> c
 @cython.nogil
 @cython.exceptval(check=False)
 def _normal_tail(z: cython.double) -> cython.double:
-    """P(Z > z) for z >= 0: Taylor series below 2.5, continued fraction above (Abramowitz & Stegun 26.2.11, 14)."""
-    density: cython.double = exp(-0.5 * z * z - LOG_SQRT_2PI)
-    total: cython.double
-    term: cython.double
-    k: cython.int
-    if z < 2.5:
-        total = z
-        term = z
-        for k in range(1, 60):
-            term = term * z * z / (2.0 * k + 1.0)
-            total += term
-            if term < 1e-17 * total:
-                break
-        return 0.5 - density * total
-    total = z
-    for k in range(60, 0, -1):
-        total = z + k / total
-    return density / total
+    """P(Z > z)."""
+    return 0.5 * erfc(z * SQRT_HALF)
 
 
 @cython.cfunc

@@ -202,7 +202,9 @@ class Autoregression(NumbersModel):
         for side in self._sides:
             columns = [column for column, (at, _) in enumerate(chosen) if living[at][0] is side]
             places_there = np.array([living[chosen[column][0]][1] for column in columns], dtype=np.intp)
-            if columns:
+            if columns and steps == 1:
+                means[:, columns], scales[:, columns] = side.next(dates, df)
+            elif columns:
                 means[:, columns], scales[:, columns] = side.ahead(places_there, steps, dates, df)
         heavy = np.array([weight for _, weight in chosen])
         sides = [living[at][0] for at, _ in chosen]

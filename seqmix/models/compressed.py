@@ -293,12 +293,14 @@ class Compressed(StatesModel):
 
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
         self._slept: list[Codes] = []  # through, and not followed yet
+        self._rows_slept = 0
         self.reader = Reader(self.compressor(), alphabet, self._allowance)
         return [self.reader], History(1)
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         if not frozen and self.sleeps(len(rows)):
             self._slept.append(rows.codes)
+            self._rows_slept += len(rows)
             return np.full(len(rows), np.nan)
         self._follow()
         return super().absorb(rows, ask, frozen)
@@ -307,11 +309,11 @@ class Compressed(StatesModel):
         """Follow the rows slept through: all at once costs less than one by one."""
         if self._slept:
             codes = np.concatenate(self._slept)
-            self._slept = []
+            self._slept, self._rows_slept = [], 0
             super().absorb(Rows(codes, None, 0))
 
     def sleeps(self, rows: int) -> bool:
-        return self.reader.sleeps(sum(map(len, self._slept)) + rows)
+        return self.reader.sleeps(self._rows_slept + rows)
 
     def predict(self, time: int | None = None) -> StatesLaw | None:  # type: ignore[override]
         if self.sleeps(1):
@@ -338,7 +340,7 @@ class Compressed(StatesModel):
         return super().state()
 
     def restore(self, state: dict[str, Any]) -> None:
-        self._slept = []
+        self._slept, self._rows_slept = [], 0
         super().restore(state)
 
     def again(self, codes: Codes) -> Compressed:

@@ -29,6 +29,7 @@ class CompressedBins(Bins):
         """allowance None: always awake."""
         self._allowance = allowance
         self._slept: list[Rows] = []  # through, and not followed yet
+        self._rows_slept = 0
         super().__init__(context)
 
     def _first(self) -> Compressed:
@@ -40,24 +41,25 @@ class CompressedBins(Bins):
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         assert rows.values is not None
-        slept = sum(map(len, self._slept)) + len(rows)
+        slept = self._rows_slept + len(rows)
         before_look = self.rows + slept < 1 << self.rows.bit_length()
         if not frozen and before_look and (not self.awake or self._states.sleeps(slept)):
             self._slept.append(rows)
+            self._rows_slept = slept
             return np.where(np.isnan(rows.values), 0.0, np.nan)
         self._follow()
         return super().absorb(rows, ask, frozen)
 
     def _follow(self) -> None:
         """Follow the rows slept through: all at once costs less than one by one."""
-        slept, self._slept = self._slept, []
+        slept, self._slept, self._rows_slept = self._slept, [], 0
         if slept:
             parts = [(rows.codes, rows.values, rows.cells) for rows in slept]
             codes, values, cells = (np.concatenate(some) for some in zip(*parts, strict=True))
             super().absorb(Rows(codes, None, slept[0].first, values, cells))
 
     def predict(self, time: int | None = None) -> NumberLaw | None:
-        if self._slept and (not self.awake or self._states.sleeps(sum(map(len, self._slept)) + 1)):
+        if self._slept and (not self.awake or self._states.sleeps(self._rows_slept + 1)):
             return None
         self._follow()
         return super().predict(time)
@@ -81,7 +83,7 @@ class CompressedBins(Bins):
         return super().state()
 
     def restore(self, state: dict[str, Any]) -> None:
-        self._slept = []
+        self._slept, self._rows_slept = [], 0
         super().restore(state)
 
     def setting(self) -> str:

@@ -216,6 +216,13 @@ class NumberLaw:
         """The law without its lightest parts, of weight `light` in all."""
         return NumberLaw.combine([1.0], [self], light)
 
+    def eased(self) -> NumberLaw:
+        """Nearly the same law, faster: Student t of 60 degrees of freedom or more as normal laws of their variance."""
+        near = self.shapes >= 60.0
+        df = np.where(near, self.shapes, 60.0)
+        scales = np.where(near, self.scales * np.sqrt(df / (df - 2.0)), self.scales)
+        return NumberLaw(self.weights, self.centres, scales, np.where(near, NORMAL, self.shapes), self.logs)
+
     def draw(self, rng: np.random.Generator, count: int) -> Floats:
         """(count,) independent numbers from the law."""
         which = rng.choice(len(self.weights), size=count, p=self.weights / self.weights.sum())

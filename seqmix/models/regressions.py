@@ -64,10 +64,7 @@ class Regressions(Kept):
 
     def learn(self, cells: Cells, dates: npt.NDArray[np.int32], df: Floats) -> tuple[Floats, Floats, Floats]:
         """Losses, forecasts and scales, (n, living settings) each, forecasts and scales in units; df (fadings, n)."""
-        shapes = settled(df, self.log)
-        norms = np.array([[log_peak(shape) for shape in line] for line in shapes.tolist()])
         n, side = len(cells), int(self.log)
-        settings = len(self.alive)
         usable = cells.usable[side]
         seen = np.ascontiguousarray((cells.seen[side] - self.middle) / self.unit)
         spans = np.ascontiguousarray((cells.spans[side] - np.array([self.middle, 0.0])) / self.unit)
@@ -81,9 +78,26 @@ class Regressions(Kept):
         if (usable == 1).any():
             self.low = min(self.low, float(seen[usable == 1].min()))
             self.high = max(self.high, float(seen[usable == 1].max()))
+        forecasts, scales, bits = self._run(rows, seen, spans, usable, dates, df, starts, columns)
+        return bits, forecasts, scales
+
+    def _run(
+        self,
+        rows: Floats,
+        seen: Floats,
+        spans: Floats,
+        usable: npt.NDArray[np.uint8],
+        dates: npt.NDArray[np.int32],
+        df: Floats,
+        starts: npt.NDArray[np.int32],
+        columns: npt.NDArray[np.int32],
+    ) -> tuple[Floats, Floats, Floats]:
+        """Forecasts, scales and losses of rows, (n, living settings); learns those that are usable."""
+        shapes = settled(df, self.log)
+        norms = np.array([[log_peak(shape) for shape in line] for line in shapes.tolist()])
         rate = np.array([self.choices[i].fading for i in self.alive], dtype=np.int32)
         dated = np.array([self.choices[i].dated for i in self.alive], dtype=np.int32)
-        bits, forecasts, scales = (np.empty((n, settings)) for _ in range(3))
+        forecasts, scales, bits = (np.empty((len(rows), len(self.alive))) for _ in range(3))
         most = self.means.shape[1]
         kernel.regress(
             view(rows), view(seen), view(spans), view(usable), not self.log, view(dates), view(df), view(shapes),
@@ -92,7 +106,19 @@ class Regressions(Kept):
             view(np.empty(most)),
             view(forecasts), view(scales), view(bits),
         )  # fmt: skip
-        return bits, forecasts, scales
+        return forecasts, scales, bits
+
+    def next(self, dates: npt.NDArray[np.int32], df: Floats) -> tuple[Floats, Floats]:
+        """Means and scales of the next row, (1, living settings), in units; dates (phases, 1), df (fadings,)."""
+        starts, columns, lags = self.columns()
+        rows = np.ones((1, 1 + len(lags)))
+        rows[0, 1:] = self.past[len(self.past) - np.array(lags)]
+        nothing = np.zeros(1, dtype=np.uint8)
+        forecasts, scales, _ = self._run(
+            rows, np.zeros(1), np.zeros((1, 2)), nothing, np.ascontiguousarray(dates),
+            np.ascontiguousarray(df[:, None]), starts, columns,
+        )  # fmt: skip
+        return forecasts, scales
 
     def ahead(
         self, which: npt.NDArray[np.intp], steps: int, dates: npt.NDArray[np.int32], df: Floats
