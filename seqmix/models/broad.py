@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import isnan, nan
+from math import inf, isnan, nan
 
 import numpy as np
 
@@ -13,6 +13,7 @@ from seqmix.models.laws import FIRST, Floats, NumberLaw, log_peak
 
 _SHAPE = 2.0  # degrees of freedom: heavy tails, but a mean
 _RECENT = 256  # steps that the scale is taken from
+_SHAPES, _PEAKS = np.array([_SHAPE]), np.array([log_peak(_SHAPE)])
 
 
 class Broad(Kept):
@@ -33,6 +34,8 @@ class Broad(Kept):
 
     def absorb(self, values: Floats, widths: Floats) -> Floats:
         """Bits of the cell of each row under the law before it, (n,); of no meaning where a value is missing."""
+        if len(values) == 1 and not isnan(self.last):
+            return self._absorb_one(values, widths)
         there = np.flatnonzero(~np.isnan(values))
         if not len(there):
             return np.zeros(len(values))
@@ -55,6 +58,21 @@ class Broad(Kept):
             steps = np.abs(np.diff(held[1:] if began else held))
         self.steps = np.concatenate([self.steps, steps[(steps > 0) & np.isfinite(steps)]])[-_RECENT:]
         self.last = float(held[-1])
+        return bits
+
+    def _absorb_one(self, values: Floats, widths: Floats) -> Floats:
+        """The same for one row, with fewer arrays."""
+        bits = np.zeros(1)
+        value = float(values[0])
+        if not isnan(value):
+            kernel.masses(
+                view(_SHAPES), view(_PEAKS), view(np.ascontiguousarray(values)), view(np.ascontiguousarray(widths)),
+                view(np.array([self.last])), view(np.array([self.scale])), view(bits),
+            )  # fmt: skip
+            step = abs(value - self.last)
+            if 0.0 < step < inf:
+                self.steps = np.append(self.steps, step)[-_RECENT:]
+            self.last = value
         return bits
 
     def refit(self) -> None:

@@ -19,6 +19,7 @@ Contexts = Callable[[Past], Sequence[Keys]]
 """The contexts of every row, as hashes (n,), for nested contexts the shortest first."""
 
 ASK = -2  # as a code: give the law, learn nothing
+_ASK_ONE, _FIRST_LINE = np.full(1, ASK, dtype=np.int32), np.zeros(1, dtype=np.int32)
 
 _DEEPEST = 32  # digits of a state: enough for 8^16 states
 
@@ -116,6 +117,10 @@ class ContextTree(Setting):
 
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         contexts = self._contexts(fork)
+        if fork.size == 1:
+            one = np.zeros((1, max(states, 1)))
+            self._run(np.stack(contexts, axis=1), _ASK_ONE, _FIRST_LINE, one)
+            return one[:, :states]
         _, first, which = np.unique(contexts[-1], return_index=True, return_inverse=True)  # the longest tells all
         keys = np.stack([key[first] for key in contexts], axis=1)
         laws = np.zeros((len(keys), max(states, 1)))

@@ -6,6 +6,7 @@ from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import ClassVar
 
 import numpy as np
 import numpy.typing as npt
@@ -44,20 +45,26 @@ class Context:
 class Cells:
     """The cells of n rows on the plain (0) and the log (1) scale."""
 
+    _latest: ClassVar[tuple[Rows, Cells] | None] = None
+
     def __init__(self, values: Floats, widths: Floats) -> None:
         self.values = values
         self.widths = widths
 
     @classmethod
     def of(cls, rows: Rows) -> Cells:
+        """Those of the same rows are made once, for all models."""
         assert rows.values is not None and rows.cells is not None
-        return cls(rows.values, rows.cells)
+        shared = cls._latest
+        if shared is None or shared[0] is not rows:
+            shared = cls._latest = rows, cls(rows.values, rows.cells)
+        return shared[1]
 
     def __len__(self) -> int:
         return len(self.values)
 
     def __getitem__(self, part: slice) -> Cells:
-        return Cells(self.values[part], self.widths[part])
+        return self if part.indices(len(self)) == (0, len(self), 1) else Cells(self.values[part], self.widths[part])
 
     @cached_property
     def usable(self) -> npt.NDArray[np.uint8]:

@@ -67,6 +67,11 @@ class _Pool(Setting):
     def laws(self, fork: Fork, place: npt.NDArray[np.int64], states: int) -> Floats:
         guess, trust = self._follower.guesses(fork, place)
         contexts = self._contexts(fork)
+        if fork.size == 1:
+            one = np.zeros((1, max(states, 1)))
+            nothing, want = np.full(1, ASK, dtype=np.int32), np.zeros(1, dtype=np.int32)
+            self._run(np.stack(contexts, axis=1), guess, trust, nothing, want, one)
+            return one[:, :states]
         whole = stir(stir(fork.order(0), guess), trust)
         for key in contexts:
             whole = stir(whole, key.view(np.int64))
