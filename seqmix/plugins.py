@@ -19,8 +19,7 @@ import numpy as np
 
 from seqmix.errors import PluginWarning, SeqmixError, visible
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import FEWEST_PATHS, StatesLaw, Walk
+from seqmix.models.protocol import FEWEST_PATHS, Context, StatesLaw, Walk
 from seqmix.models.registry import DEFAULT, Entry, entries
 
 MODELS, COMPRESSORS = "seqmix.models", "seqmix.compressors"

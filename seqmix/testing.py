@@ -12,8 +12,7 @@ from typing import Any
 
 import numpy as np
 
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import Ask
+from seqmix.models.protocol import Ask, Context
 from seqmix.series.rows import Rows
 
 HOUR = 3_600_000_000

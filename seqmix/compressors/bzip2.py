@@ -10,7 +10,7 @@ class Bzip2:
     name = "bzip2"
     summary = "code lengths of bzip2: sorted contexts of the last 1,024 rows"
     source = "Burrows & Wheeler 1994"
-    cost = 100.0
+    cost = 200.0
     reach = 1 << 10
     informed = False
 

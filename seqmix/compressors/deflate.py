@@ -10,7 +10,7 @@ class Deflate:
     name = "deflate"
     summary = "code lengths of deflate: verbatim repeats in the last 32,768 rows"
     source = "RFC 1951 (Deutsch 1996)"
-    cost = 10.0
+    cost = 12.0
     reach = 1 << 15
     informed = False
 

@@ -10,7 +10,7 @@ class Zstd:
     name = "zstd"
     summary = "code lengths of zstandard: verbatim repeats in the last 65,536 rows"
     source = "RFC 8878 (Collet & Kucherawy 2021)"
-    cost = 3.0
+    cost = 6.0
     reach = 1 << 16
     informed = False
 

@@ -15,8 +15,7 @@ from seqmix.errors import OptionError, SeqmixError
 from seqmix.keep import Kept
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import FEWEST_PATHS, Ask, Floats, Model, StatesLaw, Walk, added_up, leading, split
+from seqmix.models.protocol import FEWEST_PATHS, Ask, Context, Floats, Model, StatesLaw, Walk, added_up, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
 _WORTH_THREADS = 2048  # rows; below, starting threads costs more than it saves

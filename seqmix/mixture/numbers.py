@@ -13,8 +13,8 @@ from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES
 from seqmix.models import registry
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import FIRST, Context
-from seqmix.models.protocol import Ask, Floats, leading, split
+from seqmix.models.numbers import FIRST
+from seqmix.models.protocol import Ask, Context, Floats, leading, split
 from seqmix.series.grid import Grid
 from seqmix.series.rows import CHUNK, Rows
 

@@ -19,8 +19,8 @@ from seqmix.models.calendar import phases
 from seqmix.models.errors import ErrorLaw
 from seqmix.models.lags import FADING, choices
 from seqmix.models.laws import Floats, NumberLaw, settled
-from seqmix.models.numbers import LOOKS, STRAY, Cells, Context, NumbersModel, with_stray
-from seqmix.models.protocol import Ask, leading, split
+from seqmix.models.numbers import LOOKS, STRAY, Cells, NumbersModel, with_stray
+from seqmix.models.protocol import Ask, Context, leading, split
 from seqmix.models.regressions import WIDE, Regressions
 from seqmix.series.rows import Rows
 

@@ -13,9 +13,9 @@ from seqmix.models.broad import Broad
 from seqmix.models.history import Codes
 from seqmix.models.laws import UNIFORM, Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import Context, NumbersModel
+from seqmix.models.numbers import NumbersModel
 from seqmix.models.pool import Pool
-from seqmix.models.protocol import Ask, StatesModel
+from seqmix.models.protocol import Ask, Context, StatesModel
 from seqmix.series.rows import Rows
 
 MOST = 16

@@ -33,7 +33,7 @@ _PULL = 0.3  # first factor of the code lengths, in bytes
 _RATE = 0.02  # of the factors, along the gradient of the loss
 _SHARE = 0.01  # a row, back to even trust in the code lengths and the plain frequencies
 _WIDE = 192  # states from which on a letter takes two bytes; a stretch adds at most 32
-_LONGEST_SLEEP = 128 * STRETCH  # rows before it is decided again
+_LONGEST_SLEEP = 2048 * STRETCH  # rows before it is decided again
 _PATHS = 10  # continuations of other models for which one is looked at here
 _WAYS = 200  # different continuations whose laws are looked at, the commonest; others have the plain frequencies
 

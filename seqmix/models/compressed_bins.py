@@ -13,8 +13,7 @@ from seqmix.models.compressed import Allowance, Compressed
 from seqmix.models.compressed import model_of as states_model_of
 from seqmix.models.history import Codes
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import Ask
+from seqmix.models.protocol import Ask, Context
 from seqmix.series.rows import Rows
 
 
@@ -96,5 +95,5 @@ def model_of(compressor: type[Compressor]) -> type[CompressedBins]:
     return type(
         f"{compressor.__name__}Bins",
         (CompressedBins,),
-        {**facts, "of_states": states_model_of(compressor), "__module__": __name__},
+        {**facts, "compressor": compressor, "of_states": states_model_of(compressor), "__module__": __name__},
     )

@@ -13,8 +13,8 @@ from seqmix.mixture.weights import Weights
 from seqmix.models.broad import Broad
 from seqmix.models.calendar import phases
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Context, NumbersModel
-from seqmix.models.protocol import Ask, split
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Ask, Context, split
 from seqmix.series.rows import Rows
 
 DISCOUNTS = (1.0, 0.99, 0.97, 0.9, 0.8)

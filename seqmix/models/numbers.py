@@ -1,10 +1,9 @@
-"""What the models of numbers share: the context of a log, cells on two scales, and banks of settings."""
+"""What the models of numbers share: cells on two scales, and banks of settings."""
 
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
-from dataclasses import dataclass
 from functools import cached_property
 from typing import ClassVar
 
@@ -15,7 +14,7 @@ from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.broad import Broad
 from seqmix.models.laws import FIRST, Floats, NumberLaw
-from seqmix.models.protocol import Ask, leading, split
+from seqmix.models.protocol import Ask, Context, leading, split
 from seqmix.series.rows import Rows
 
 LOOKS = tuple(1 << k for k in range(4, 40))
@@ -28,18 +27,6 @@ STRAY = 2.0**-12
 def with_stray(bits: Floats, broad: Floats) -> Floats:
     """Losses (n,) of a law with a broad one mixed in."""
     return -np.logaddexp2(np.log2(1.0 - STRAY) - bits, np.log2(STRAY) - broad)
-
-
-@dataclass(frozen=True)
-class Context:
-    """What models of numbers may know of a log beforehand.
-
-    periods: rows per repeat, from the clock or the user. cadence: microseconds a row. timed: rows have times.
-    """
-
-    periods: tuple[int, ...] = ()
-    cadence: int | None = None
-    timed: bool = False
 
 
 class Cells:

@@ -26,6 +26,18 @@ FEWEST_PATHS = 512
 """Continuations that even a light model or setting may follow."""
 
 
+@dataclass(frozen=True)
+class Context:
+    """What models may know of a log beforehand.
+
+    periods: rows per repeat, from the clock or the user. cadence: microseconds a row. timed: rows have times.
+    """
+
+    periods: tuple[int, ...] = ()
+    cadence: int | None = None
+    timed: bool = False
+
+
 class Ask:
     """Rows of a chunk whose whole law is wanted, not just the loss.
 

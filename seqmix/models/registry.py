@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
+from functools import cache
+from typing import TYPE_CHECKING, Any
 
 from seqmix import __version__
 from seqmix.compressors.brotli import Brotli
@@ -13,25 +14,20 @@ from seqmix.compressors.deflate import Deflate
 from seqmix.compressors.protocol import Compressor
 from seqmix.compressors.zstd import Zstd
 from seqmix.errors import OptionError, visible
-from seqmix.models import compressed, compressed_bins
-from seqmix.models.autoregression import Autoregression
-from seqmix.models.bins import Bins
+from seqmix.models import compressed
 from seqmix.models.clock import Clock
-from seqmix.models.counts import Counts
 from seqmix.models.cycle import Cycle
 from seqmix.models.dwell import Dwell
 from seqmix.models.lz78 import LZ78
 from seqmix.models.markov import Markov
 from seqmix.models.match import Match
 from seqmix.models.memoryless import Memoryless
-from seqmix.models.numbers import Context, NumbersModel
 from seqmix.models.pool import Pool
-from seqmix.models.protocol import StatesModel
-from seqmix.models.rhythm import Rhythm
-from seqmix.models.rules import Rules
+from seqmix.models.protocol import Context, StatesModel
 from seqmix.models.tree import Tree
-from seqmix.models.trend import Season, Trend
-from seqmix.models.values import Values
+
+if TYPE_CHECKING:
+    from seqmix.models.numbers import NumbersModel
 
 COMPRESSORS: tuple[type[Compressor], ...] = (Deflate, Bzip2, Zstd, Brotli)
 
@@ -40,10 +36,29 @@ MODELS: tuple[type[StatesModel], ...] = (
     *map(compressed.model_of, COMPRESSORS),
 )
 
-NUMBER_MODELS: tuple[type[NumbersModel], ...] = (
-    *(Trend, Season, Autoregression, Rhythm, Counts, Values, Bins, Rules),
-    *map(compressed_bins.model_of, COMPRESSORS),
-)
+
+def __getattr__(name: str) -> Any:
+    """NUMBER_MODELS, made when they are asked for: a log of states starts sooner without them."""
+    if name != "NUMBER_MODELS":
+        raise AttributeError(f"module 'seqmix.models.registry' has no attribute {name!r}")
+    return number_models()
+
+
+@cache
+def number_models() -> tuple[type[NumbersModel], ...]:
+    """The models of numbers, in their fixed order."""
+    from seqmix.models import compressed_bins
+    from seqmix.models.autoregression import Autoregression
+    from seqmix.models.bins import Bins
+    from seqmix.models.counts import Counts
+    from seqmix.models.rhythm import Rhythm
+    from seqmix.models.rules import Rules
+    from seqmix.models.trend import Season, Trend
+    from seqmix.models.values import Values
+
+    plain = (Trend, Season, Autoregression, Rhythm, Counts, Values, Bins, Rules)
+    return *plain, *map(compressed_bins.model_of, COMPRESSORS)
+
 
 DEFAULT = "default"
 """As a name of a model: all of the library that fit."""
@@ -72,7 +87,7 @@ class Entry:
 def entries() -> list[Entry]:
     """The whole library, in its fixed order; without plug-ins."""
     found: dict[str, Entry] = {}
-    library: list[Any] = [*MODELS, *NUMBER_MODELS]
+    library: list[Any] = [*MODELS, *number_models()]
     for model in library:
         kinds = (*found[model.name].kinds, *model.kinds) if model.name in found else model.kinds
         found[model.name] = Entry(model.name, kinds, model.prior_cost, model.summary, model.source)
@@ -101,17 +116,15 @@ def make(kind: str, context: Context, names: Sequence[str] | None = None, share:
 def _fitting(kind: str, context: Context, share: float) -> dict[str, Any]:
     library: list[Any]
     if kind == "numbers":
-        library = [model for model in NUMBER_MODELS if model.fits(context)]
+        library = [model for model in number_models() if model.fits(context)]
     else:
         library = [model for model in MODELS if kind in model.kinds and (context.timed or not model.needs_times)]
     return {model.name: model for model in library if share or not _compresses(model)}
 
 
 def _compresses(model: Any) -> bool:
-    from seqmix.plugins import Plugin  # only where it is needed: start-up time
-
-    built = model.model if isinstance(model, Plugin) else model
-    return isinstance(built, type) and issubclass(built, compressed.Compressed | compressed_bins.CompressedBins)
+    """Whether a class, or that of a plug-in, is made of a compressor: it is then made with an allowance."""
+    return hasattr(getattr(model, "model", model), "compressor")
 
 
 def _made(model: Any, what: Any, allowance: compressed.Allowance | None) -> Any:

@@ -9,8 +9,8 @@ import numpy as np
 from seqmix.keep import Kept
 from seqmix.models.autoregression import Autoregression
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Context, NumbersModel
-from seqmix.models.protocol import Ask
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Ask, Context
 from seqmix.models.regressions import fill_gaps
 from seqmix.series.rows import Rows
 

@@ -12,8 +12,8 @@ from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.broad import Broad
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Context, NumbersModel
-from seqmix.models.protocol import Ask
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Ask, Context
 from seqmix.models.recurrence import recurrence
 from seqmix.series.rows import Rows
 

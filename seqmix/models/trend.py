@@ -10,7 +10,8 @@ import numpy.typing as npt
 from seqmix.kernels import numbers as kernel
 from seqmix.kernels import view
 from seqmix.models.laws import Floats, NumberLaw, log_peak, settled
-from seqmix.models.numbers import Cells, Context, NumberBank
+from seqmix.models.numbers import Cells, NumberBank
+from seqmix.models.protocol import Context
 from seqmix.series.rows import Rows
 
 LEVEL_NOISE = (0.0, 0.001, 0.01, 0.03, 0.1, 0.3, 1.0, 3.0)

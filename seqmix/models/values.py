@@ -15,8 +15,8 @@ from seqmix.models.broad import Broad
 from seqmix.models.history import Codes
 from seqmix.models.laws import Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import Context, NumbersModel
-from seqmix.models.protocol import Ask
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Ask, Context
 from seqmix.series.rows import Rows
 
 if TYPE_CHECKING:

@@ -21,7 +21,7 @@ from processes import table
 from scipy.stats import norm
 
 from seqmix.mixture.numbers import NumberMixture
-from seqmix.models.numbers import Context
+from seqmix.models.protocol import Context
 
 
 @dataclass(frozen=True)

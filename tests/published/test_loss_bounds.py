@@ -24,8 +24,7 @@ from logs import by_appearance
 from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import Model
+from seqmix.models.protocol import Context, Model
 from seqmix.series.rows import CHUNK, Rows
 
 DATA = Path(__file__).parents[1] / "data"

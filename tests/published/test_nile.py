@@ -17,7 +17,7 @@ from scipy import stats
 from seqmix.models import trend
 from seqmix.models.autoregression import FADING, WAKE, Autoregression
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import Context
+from seqmix.models.protocol import Context
 from seqmix.models.trend import Trend
 from seqmix.series.rows import Rows
 

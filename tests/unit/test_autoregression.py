@@ -9,7 +9,7 @@ import pytest
 
 from seqmix.models.autoregression import WAKE, Autoregression
 from seqmix.models.calendar import DAY, HOUR
-from seqmix.models.numbers import Context
+from seqmix.models.protocol import Context
 from seqmix.models.regressions import WIDE
 from seqmix.models.rhythm import Rhythm, find_period
 from seqmix.series.rows import Rows

@@ -20,7 +20,7 @@ from seqmix.models import compressed, registry
 from seqmix.models.compressed import STRETCH, WINDOWS, Allowance, Compressed, Reader
 from seqmix.models.compressed_bins import CompressedBins
 from seqmix.models.history import History
-from seqmix.models.numbers import Context
+from seqmix.models.protocol import Context
 from seqmix.reading import LAST, with_last
 from seqmix.series.rows import Rows
 

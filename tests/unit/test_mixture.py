@@ -18,8 +18,7 @@ from seqmix.mixture import mixture as module
 from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES, Weights
 from seqmix.models import registry
-from seqmix.models.numbers import Context
-from seqmix.models.protocol import Ask, Model, StatesLaw, Walk
+from seqmix.models.protocol import Ask, Context, Model, StatesLaw, Walk
 from seqmix.series.rows import Rows
 
 MINUTE = 60_000_000

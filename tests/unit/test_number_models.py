@@ -11,7 +11,8 @@ import pytest
 from seqmix.mixture.numbers import NumberMixture
 from seqmix.models import registry
 from seqmix.models.compressed_bins import CompressedBins
-from seqmix.models.numbers import Context, NumbersModel
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Context
 from seqmix.testing import CONTEXT, NUMBER_CHECKS, NUMBER_LOGS, made, small_counts, waves
 
 

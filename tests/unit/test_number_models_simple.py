@@ -9,7 +9,8 @@ import pytest
 
 from seqmix.models.bins import Bins
 from seqmix.models.counts import Counts, log_mass
-from seqmix.models.numbers import Context, NumbersModel
+from seqmix.models.numbers import NumbersModel
+from seqmix.models.protocol import Context
 from seqmix.models.rules import Rules, recurrence
 from seqmix.models.values import Values
 from seqmix.series.grid import Grid

@@ -13,7 +13,8 @@ from seqmix import number_scoring
 from seqmix.mixture.numbers import NumberMixture
 from seqmix.models.calendar import HOUR
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import FIRST, Context
+from seqmix.models.numbers import FIRST
+from seqmix.models.protocol import Context
 from seqmix.number_baselines import NumberBaseline, number_baselines
 from seqmix.number_scoring import CENTRAL, PINBALL
 from seqmix.series.rows import Rows

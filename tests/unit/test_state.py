@@ -21,7 +21,7 @@ from seqmix.learned import Learned, facts_of, load
 from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.numbers import NumberMixture
 from seqmix.models import registry
-from seqmix.models.numbers import Context
+from seqmix.models.protocol import Context
 from seqmix.series.rows import CHUNK, Rows
 
 DATA = Path(__file__).parents[1] / "data"

@@ -8,7 +8,8 @@ import numpy as np
 import pytest
 
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import FIRST, Context
+from seqmix.models.numbers import FIRST
+from seqmix.models.protocol import Context
 from seqmix.models.trend import Season, Trend
 from seqmix.series.rows import Rows
 
