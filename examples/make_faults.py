@@ -72,7 +72,9 @@ def recipe(seed: int) -> str:
     line = TwoRecipes(seed)
     while line.now < RECIPE_ROWS:
         line.tray()
-    rows = (f"{SHIFT + timedelta(seconds=row * STEP):%Y-%m-%dT%H:%M:%S},{line.states[row]}" for row in range(RECIPE_ROWS))
+    rows = (
+        f"{SHIFT + timedelta(seconds=row * STEP):%Y-%m-%dT%H:%M:%S},{line.states[row]}" for row in range(RECIPE_ROWS)
+    )
     return "\n".join(["time,state", *rows]) + "\n"
 
 
