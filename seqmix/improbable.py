@@ -41,7 +41,7 @@ def of_state(masses: Floats, code: int) -> Improbable:
     levels = np.cumsum(some)  # one after the other: states that cannot come change no bit
     p = min(float(levels[np.searchsorted(some, masses[code] * _SAME, side="right") - 1]), 1.0)
     expected = float(np.cumsum(-some * np.log2(some))[-1])
-    return Improbable(p, max(expected, 0.0), levels, np.ones(len(levels), dtype=bool))
+    return Improbable(p, max(0.0, expected), levels, np.ones(len(levels), dtype=bool))
 
 
 def of_number(law: NumberLaw, value: float, width: float, median: float) -> Improbable:
@@ -70,7 +70,7 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
     p = float(masses @ _no_likelier(each, cells, each[came] * _SAME))
     there = each > 0
     expected = float(-(masses[there] * np.log2(each[there])).sum())
-    return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
+    return Improbable(min(p, 1.0), max(0.0, expected), levels, cells[order] <= 1.0)
 
 
 def _no_likelier(each: Floats, cells: Floats, than: float) -> Floats:
