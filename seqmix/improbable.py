@@ -70,7 +70,7 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
     p = float(masses @ _no_likelier(each, cells, each[came] * _SAME))
     there = each > 0
     expected = float(-(masses[there] * np.log2(each[there])).sum())
-    return Improbable(min(p, 1.0), max(0.0, expected), levels, cells[order] <= 1.0)
+    return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
 
 
 def _no_likelier(each: Floats, cells: Floats, than: float) -> Floats:
