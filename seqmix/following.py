@@ -143,21 +143,25 @@ class Follower:
             before = self._known.mixture
             rows = joined(list(self._known.push(some)))
             assert rows is not None
-            if self._known.mixture is not before:  # the cadence is another than it seemed
-                self._told = self._law = self._alarms = None
-            if self._alarms is None:
-                self._alarms = self._at_rate()
+            anew = self._known.mixture is not before  # the cadence is another than it seemed
+            if anew:
+                self._told = self._law = None
+            if anew or self._alarms is None:
+                self._set_rate()
             logged = len(rows) - (stop - start)
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
             yield from (answer for row, answer in enumerate(answers) if row >= logged)
             start = stop
 
-    def _at_rate(self) -> Alarms | None:
+    def _set_rate(self) -> None:
         """Alarms at the rate asked for; none yet where it is in time and the cadence has not shown yet."""
         known = self._known
         if known.facts.cadence is None and known.timed and not known.settled and not in_rows(self._false_alarms):
-            return None
-        return Alarms(rate_of(self._false_alarms, known.facts.cadence))
+            return
+        rate = rate_of(self._false_alarms, known.facts.cadence)
+        if self._alarms is None:
+            self._alarms = Alarms(rate)
+        self._alarms.rate = rate
 
     def _together(self, times: np.ndarray | None, rows: int) -> int:
         """How many of the next rows may be taken together: those that come when they are expected."""
