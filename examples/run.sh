@@ -1,7 +1,11 @@
 #!/bin/sh
-# A tour of seqmix on the logs of a small dairy. Needs `seqmix` in PATH; runs from any directory, writes no file.
+# A tour of seqmix on the logs of a small dairy. Needs `seqmix` and `python3` in PATH; runs from any directory, leaves no file.
 set -eu
 cd "$(dirname "$0")"
+kept=$(mktemp -d)
+trap 'rm -r "$kept"' EXIT
+trap 'exit 130' INT
+trap 'exit 143' TERM
 
 show() {
     printf '\n== %s\n' "$1"
@@ -55,3 +59,16 @@ seqmix alike runs/day-*.txt --to runs/today.txt --quiet --format table
 
 show "Cups on a belt, by a packing list that slips now and then: with time to spare, a compressor finds the place best"
 seqmix weights belt.txt --compressor-share 0.9 --quiet --format table
+
+show "What the tank's log taught is kept, by two models that answer soon"
+seqmix learn tank.csv --into "$kept/tank.state" --models autoregression,values --quiet --format table
+
+show "The days after it, row by row as they come: a stuck probe comes free, a failing valve springs open"
+head -n 700 faults.csv |
+    seqmix follow --state "$kept/tank.state" --false-alarms 1/week --quiet --format jsonl | python3 raise.py
+
+show "Events of three weeks of the bottling line: rows that were improbable when they came"
+seqmix surprise weeks.csv.gz --column state --quiet --format table
+
+show "The line changes over to bigger bottles: from which row on?"
+seqmix shifts recipe.csv --odds 1000 --quiet --format table

@@ -16,7 +16,7 @@ from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask
 from seqmix.series import Rows, open_log
 from seqmix.series.rows import Piece, join, joined
-from seqmix.surprising import RATE, of_law, rate_of
+from seqmix.surprising import RATE, in_rows, of_law, rate_of
 
 LEVELS = (0.1, 0.9)
 """Quantiles of a number that are told, beside the median."""
@@ -143,14 +143,25 @@ class Follower:
             before = self._known.mixture
             rows = joined(list(self._known.push(some)))
             assert rows is not None
-            if self._known.mixture is not before:  # the cadence is another than it seemed
+            anew = self._known.mixture is not before  # the cadence is another than it seemed
+            if anew:
                 self._told = self._law = None
-            if self._alarms is None:
-                self._alarms = Alarms(rate_of(self._false_alarms, self._known.facts.cadence))
+            if anew or self._alarms is None:
+                self._set_rate()
             logged = len(rows) - (stop - start)
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
             yield from (answer for row, answer in enumerate(answers) if row >= logged)
             start = stop
+
+    def _set_rate(self) -> None:
+        """Alarms at the rate asked for; none yet where it is in time and the cadence has not shown yet."""
+        known = self._known
+        if known.facts.cadence is None and known.timed and not known.settled and not in_rows(self._false_alarms):
+            return
+        rate = rate_of(self._false_alarms, known.facts.cadence)
+        if self._alarms is None:
+            self._alarms = Alarms(rate)
+        self._alarms.rate = rate
 
     def _together(self, times: np.ndarray | None, rows: int) -> int:
         """How many of the next rows may be taken together: those that come when they are expected."""
@@ -229,7 +240,6 @@ class Follower:
     def _answer(
         self, rows: Rows, t: int, value: str | float | None, bits: float, found: Improbable | None
     ) -> dict[str, Any]:
-        assert self._alarms is not None
         time = None if rows.times is None else self._known.facts.clock.text(int(rows.times[t]))
         return {
             "row": rows.first + t + 1,
@@ -237,7 +247,7 @@ class Follower:
             "value": value,
             "bits": bits if value is not None else None,
             "p_value": None if found is None else found.p_value,
-            "surprise": found is not None and self._alarms.rings(found),
+            "surprise": found is not None and self._alarms is not None and self._alarms.rings(found),
             "forecast": self._told[0] if self._told else None,
         }
 

@@ -41,7 +41,7 @@ def of_state(masses: Floats, code: int) -> Improbable:
     levels = np.cumsum(some)  # one after the other: states that cannot come change no bit
     p = min(float(levels[np.searchsorted(some, masses[code] * _SAME, side="right") - 1]), 1.0)
     expected = float(np.cumsum(-some * np.log2(some))[-1])
-    return Improbable(p, max(expected, 0.0), levels, np.ones(len(levels), dtype=bool))
+    return Improbable(p, max(0.0, expected), levels, np.ones(len(levels), dtype=bool))
 
 
 def of_number(law: NumberLaw, value: float, width: float, median: float) -> Improbable:

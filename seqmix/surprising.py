@@ -134,6 +134,11 @@ def rate_of(text: str, cadence: int | None) -> float:
     return rate
 
 
+def in_rows(text: str) -> bool:
+    """Whether a rate counts rows, not time. Raises OptionError."""
+    return _parsed(text)[2].startswith("row")
+
+
 def _parsed(text: str) -> tuple[float, int, str]:
     """How many, in how many of which unit."""
     match = re.fullmatch(r"(\d+(?:\.\d+)?)/(\d+)? ?(rows?|hour|day|week)", text.strip())

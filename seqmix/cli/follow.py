@@ -75,7 +75,8 @@ def command(
             known.agree(library["models"], period or None, resolution, library["compressor_share"])
             last = known.filler.last
             when = "" if last is None else f", {known.facts.clock.text(last)}"
-            say(f"{visible(state or '')}: going on after row {known.rows}{when}")
+            if not source.quiet:
+                say(f"{visible(state or '')}: going on after row {known.rows}{when}")
 
         def learn(facts: Any) -> Learned:
             if facts.kind == "bytes":
