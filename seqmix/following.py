@@ -9,14 +9,14 @@ from typing import Any
 import numpy as np
 
 from seqmix.errors import DataError, SeqmixError, visible
-from seqmix.improbable import Alarms, Improbable, of_number
+from seqmix.improbable import Alarms, Improbable
 from seqmix.learned import Learned, facts_of
 from seqmix.mixture.numbers import LIGHT, NumberMixture
 from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask
 from seqmix.series import Rows, open_log
 from seqmix.series.rows import Piece, join, joined
-from seqmix.surprising import RATE, of_law, rate_of
+from seqmix.surprising import RATE, of_law, of_value, rate_of
 
 LEVELS = (0.1, 0.9)
 """Quantiles of a number that are told, beside the median."""
@@ -213,7 +213,7 @@ class Follower:
             found = None
             if there and law is not None:
                 median = self._told[0]["median"] if self._told and time == self._due else law.median
-                found = of_number(law, *mixture.latest_cell(), median)
+                found = of_value(mixture, law, median)
             answer = self._answer(rows, t, value if there else None, bits, found)
             cadence = self._known.facts.cadence or 0
             heavy = self._foretell(None if time is None else time + cadence)

@@ -41,7 +41,9 @@ def by_every_cell(law: NumberLaw, value: float, width: float) -> tuple[float, fl
     own = float(law.cdf(value + width / 2) - law.cdf(value - width / 2))
     there = masses > 0
     rest = max(1.0 - masses.sum(), 0.0)
-    return float(masses[masses <= own * (1 + 1e-9)].sum()) + rest, float(-(masses[there] * np.log2(masses[there])).sum())
+    return float(masses[masses <= own * (1 + 1e-9)].sum()) + rest, float(
+        -(masses[there] * np.log2(masses[there])).sum()
+    )
 
 
 @given(st.lists(st.integers(0, 40), min_size=1, max_size=30).filter(any), st.data())
