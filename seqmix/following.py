@@ -14,7 +14,8 @@ from seqmix.learned import Learned, facts_of
 from seqmix.mixture.numbers import LIGHT, NumberMixture
 from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask
-from seqmix.series import Rows, open_log
+from seqmix.series import CHUNK, Alphabet, Log, Rows, open_log
+from seqmix.series.facts import Facts
 from seqmix.series.rows import Piece, join, joined
 from seqmix.surprising import RATE, of_law, of_value, rate_of
 
@@ -24,11 +25,11 @@ LEVELS = (0.1, 0.9)
 AT_ONCE = 64
 """Rows taken together at most, where that gives the same answers sooner."""
 
-_FIRST_LINES = 2  # that the layout of a log is decided from
+_FIRST_LINES = 2  # with text, that the layout of a log is decided from at least
 
 
 class Reader:
-    """The lines of a live log as rows: its layout is decided from the first two, or known from before.
+    """The lines of a live log as rows: its layout is known from before, or the first few tell it.
 
     A line that cannot be read is told and left out, or raised where `strict`. One row is one line.
     """
@@ -51,21 +52,41 @@ class Reader:
         self.old = 0  # rows not later than what a state knows, left out
         self._latest = None if known is None else known.filler.last
         self._width: int | None = None
-        self._first: list[bytes] = []
+        self._first: list[bytes] = []  # lines while the layout is not decided
+        self._tried = 0  # of them
 
     def feed(self, lines: Sequence[bytes], end: bool = False) -> list[Piece]:
         """Rows of the next whole lines, in pieces. end: no line comes after these."""
         if self.known is None:
             self._first += lines
-            if not self._first or (len(self._first) < _FIRST_LINES and not end):
+            facts = self._layout(end)
+            if facts is None:
                 return []
             lines, self._first = self._first, []
-            with open_log(io.BytesIO(b"".join(lines[:_FIRST_LINES])), **self._reading) as log:
-                facts = facts_of(log, self._name)
-                # the rows themselves come again below
-                facts.alphabet = type(facts.alphabet)(fixed=facts.alphabet.fixed)
-                self.known = self._learn(facts)
+            self.known = self._learn(facts)
         return self._parse(lines, self.known)
+
+    def _layout(self, end: bool) -> Facts | None:
+        """What the fewest lines say of the log that hold two with text, and a value; None before they are there."""
+        if end and self._first:
+            self._tried = min(self._tried, len(self._first) - 1)
+        while self._tried < len(self._first):
+            self._tried += 1
+            some, last = self._first[: self._tried], end and self._tried == len(self._first)
+            if sum(bool(line.strip()) for line in some) < _FIRST_LINES and not last:
+                continue
+            with self._open(b"".join(some), **self._reading) as log:
+                facts = facts_of(log, self._name)
+                there = _any_value(log)
+            if there or last or self._tried == CHUNK:
+                facts.alphabet = Alphabet(fixed=facts.alphabet.fixed)  # the rows themselves come again
+                return facts
+        return None
+
+    def _open(self, text: bytes, **reading: Any) -> Log:
+        file = io.BytesIO(text)
+        file.name = self._name  # type: ignore[attr-defined]
+        return open_log(file, **reading)
 
     def _parse(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
         """All lines together, or where that fails one by one."""
@@ -88,7 +109,7 @@ class Reader:
         text = b"".join(lines)
         if not text.strip() and known.facts.format != "lines":
             return []
-        with open_log(io.BytesIO(text), after=known.facts) as log:
+        with self._open(text, after=known.facts) as log:
             pieces = list(log.pieces)
         return [piece for piece in map(self._new, pieces) if len(piece[0])]
 
@@ -272,6 +293,14 @@ class Follower:
         if time is None:
             return None
         return [time + (self._known.facts.cadence or 0) * step for step in range(self._steps)]
+
+
+def _any_value(log: Log) -> bool:
+    """Whether a row has one; a row that cannot be read tells enough."""
+    try:
+        return any(bool((held == held if log.kind == "numbers" else held >= 0).any()) for held, _ in log.pieces)
+    except DataError:
+        return True
 
 
 def together(pieces: list[Piece]) -> Piece | None:

@@ -6,6 +6,7 @@ import io
 import json
 import random
 from collections.abc import Callable, Iterator
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -80,6 +81,17 @@ def test_every_format_one_by_one_and_at_once(lines, expected):
     assert [value for line in lines for value in values(single, [line])] == expected
     assert told == []
     assert single.line == whole.line == len(lines)
+
+
+def test_a_log_without_a_value_yet_waits_for_one():
+    made, _ = reader(["trend"])
+    lines = ["\n", "time,celsius\n", "\n", "2026-03-02T06:00,NA\n", "2026-03-02T06:10,\n"]
+    assert [values(made, [line]) for line in lines] == [[]] * 5
+    assert values(made, ["2026-03-02T06:20,-1\n"]) == [None, None, -1.0]
+    assert made.known is not None
+    assert (made.known.facts.kind, made.known.facts.column) == ("numbers", "celsius")
+    assert values(reader()[0], [*lines[:4], "2026-03-02T06:10,jam\n"]) == [None, "jam"]
+    assert values(reader()[0], lines, end=True) == [None, None]
 
 
 def test_one_line_alone_and_none():
@@ -160,7 +172,7 @@ def test_strict_raises(bad, reason):
 
 def test_the_header_again_is_no_row():
     """A rotated log starts with one."""
-    made, told = reader()
+    made, _ = reader()
     values(made, ["time,state\n", "2026-03-02T06:00,fill\n"])
     assert values(made, ["time,state\n", "2026-03-02T06:01,cap\n"]) == ["cap"]
     assert made.known is not None
@@ -263,7 +275,7 @@ def test_what_is_told_of_the_next_row_is_its_forecast(name, steps):
     told = answers(make(rows // 2), [], models, steps)
     assert told[0]["forecast"] is None
     settling = 0
-    for before, after in zip(told, told[1:], strict=False):
+    for before, after in pairwise(told):
         if after["row"] > before["row"] + 1:  # foretold anew, for the time at which it came
             continue
         if after["forecast"] is None:  # the cadence is another than it seemed
@@ -295,7 +307,7 @@ def test_gaps_new_states_and_missing_values():
     told = answers(lines, [], QUICK)
     rows = [answer["row"] for answer in told]
     assert rows[-1] == 220 + 6  # two gaps of three rows, put in, not answered
-    assert [b - a for a, b in zip(rows, rows[1:], strict=False) if b - a > 1] == [4, 4]
+    assert [b - a for a, b in pairwise(rows) if b - a > 1] == [4, 4]
     missing = [answer for answer in told if answer["value"] is None]
     assert missing
     for answer in missing:

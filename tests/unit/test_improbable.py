@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from math import log2
 
 import numpy as np
@@ -37,7 +38,7 @@ def every_cell(law: NumberLaw, width: float) -> tuple[np.ndarray, np.ndarray]:
 
 def by_every_cell(law: NumberLaw, value: float, width: float) -> tuple[float, float]:
     """The p-value and the expected loss, cell by cell."""
-    places, masses = every_cell(law, width)
+    _, masses = every_cell(law, width)
     own = float(law.cdf(value + width / 2) - law.cdf(value - width / 2))
     there = masses > 0
     rest = max(1.0 - masses.sum(), 0.0)
@@ -93,7 +94,7 @@ def test_a_second_peak_far_from_the_median_hides_nothing():
 def test_numbers_far_out_are_ever_less_probable():
     law = NumberLaw.of([0.0, 0.0], [1.0, 1.0], [NORMAL, 1.0], [0.99, 0.01])
     found = [of_number(law, 10.0**k, 0.01, 0.0).p_value for k in range(1, 13)]
-    assert all(0 < after < before for before, after in zip(found, found[1:], strict=False))
+    assert all(0 < after < before for before, after in pairwise(found))
     assert found[2] == pytest.approx(0.01 * 2 / (np.pi * 1e3), rel=CLOSE)
 
 
