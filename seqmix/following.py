@@ -85,7 +85,7 @@ class Reader:
 
     def _open(self, text: bytes, **reading: Any) -> Log:
         file = io.BytesIO(text)
-        file.name = self._name  # type: ignore[attr-defined]
+        file.name = self._name
         return open_log(file, **reading)
 
     def _parse(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:

@@ -78,6 +78,6 @@ def test_completion_prints_the_script_of_the_shell(run, shell):
 
 def test_completion_finds_commands_and_options(run):
     asked = {"_SEQMIX_COMPLETE": "bash_complete", "COMP_CWORD": "1"}
-    assert run(COMP_WORDS="seqmix fo", **asked).out == "plain,forecast\n"
+    assert run(COMP_WORDS="seqmix fo", **asked).out == "plain,forecast\nplain,follow\n"
     asked["COMP_CWORD"] = "2"
     assert run(COMP_WORDS="seqmix score --f", **asked).out == "plain,--from\nplain,--frozen\nplain,--format\n"
