@@ -90,18 +90,26 @@ class Reader:
 
     def _parse(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
         """All lines together, or where that fails one by one."""
-        labels = len(known.facts.alphabet)
+        labels, old = len(known.facts.alphabet), self.old
         try:
             pieces = self._rows(lines, known)
         except SeqmixError as error:
             known.facts.alphabet.forget(labels)
             if len(lines) > 1:
-                return [piece for line in lines for piece in self._parse([line], known)]
+                return self._one_by_one(lines, known)
             self.line += 1
             self._refuse(error)
             return []
+        if self.old > old and len(known.facts.alphabet) > labels:  # states of rows left out must not be numbered
+            known.facts.alphabet.forget(labels)
+            if len(lines) > 1:
+                self.old = old
+                return self._one_by_one(lines, known)
         self.line += len(lines)
         return pieces
+
+    def _one_by_one(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
+        return [piece for line in lines for piece in self._parse([line], known)]
 
     def _rows(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
         if known.facts.separator is not None:
@@ -154,12 +162,12 @@ class Follower:
         if known.rows:
             self._foretell(self._expected())
 
-    def feed(self, piece: Piece) -> Iterator[dict[str, Any]]:
-        """Absorb rows as logged; an answer for each of them, missing ones too."""
+    def feed(self, piece: Piece, enough: Callable[[], bool] = lambda: False) -> Iterator[dict[str, Any]]:
+        """Absorb rows as logged; an answer for each of them, missing ones too. enough: whether to leave the rest."""
         held, times = piece
         start = 0
-        while start < len(held):
-            stop = start + self._together(None if times is None else times[start:], len(held) - start)
+        while start < len(held) and not enough():
+            stop = start + self._together(held[start:], None if times is None else times[start:])
             some = held[start:stop], None if times is None else times[start:stop]
             before = self._known.mixture
             rows = joined(list(self._known.push(some)))
@@ -172,13 +180,15 @@ class Follower:
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
             yield from (answer for row, answer in enumerate(answers) if row >= logged)
             start = stop
+        if start < len(held) and self._known.facts.kind == "states":
+            self._known.facts.alphabet.forget(self._known.mixture.seen)  # the rest may come again
 
-    def _together(self, times: np.ndarray | None, rows: int) -> int:
-        """How many of the next rows may be taken together: those that come when they are expected."""
-        if self._steps > 1:
+    def _together(self, held: np.ndarray, times: np.ndarray | None) -> int:
+        """How many of the next rows may be taken together: states that come when they are expected."""
+        if self._steps > 1 or held.dtype == np.float64:
             return 1
         if times is None:
-            return min(rows, AT_ONCE)
+            return min(len(held), AT_ONCE)
         cadence = self._known.facts.cadence
         if not self._known.settled or cadence is None:
             return 1

@@ -184,6 +184,7 @@ def test_strict_ends_at_it(run):
         (["--steps", "0"], 2, f"invalid value for '--steps': 0 is not in the range x>=1; {HINT}"),
         (["--format", "table"], 2, f"invalid value for '--format': 'table' is not one of 'csv', 'jsonl'; {HINT}"),
         (["--column", "speed"], 2, "<stdin> has no column 'speed'; its columns are 1 (like 'fill')\n"),
+        (["."], 1, ".: cannot be opened: Is a directory\n"),
         (["nofile"], 1, "nofile: cannot be opened: No such file or directory\n"),
         (["--state", "none/state"], 74, "cannot write none/state: No such file or directory\n"),
         (["--state", "nostate"], 1,
@@ -277,9 +278,38 @@ def test_a_signal_saves_and_ends_it_within_a_second(run, tmp_path, number, code)
         assert [live.answer()["row"] for _ in range(3)] == [1, 2, 3]
         start = time.monotonic()
         assert live.stop(number) == (code, f"seqmix: stopped by {number.name}\n")
-        assert time.monotonic() - start < 1.0
+        assert time.monotonic() - start < 2.0  # a tenth of that where the machine is free
     assert json.loads(run("learn", os.devnull, "--into", state, "--format", "jsonl").out)["rows"] == 3
     assert not (tmp_path / ".state.lock").exists()
+
+
+def test_a_signal_ends_it_while_nobody_takes_the_answers(tmp_path):
+    log = tmp_path / "states.txt"
+    log.write_text("fill\ncap\n" * 3000)  # more answers than a pipe holds
+    state = tmp_path / "state"
+    child = process("follow", log, "--state", state, "--save-every", "1rows", *QUICK)
+    saved(state, 1, more=True)
+    time.sleep(1.0)
+    start = time.monotonic()
+    child.terminate()
+    assert child.wait(PATIENCE) == 143
+    assert time.monotonic() - start < 3.0
+    _, err = child.communicate()
+    assert err == b"seqmix: stopped by SIGTERM\n"
+
+
+def test_a_signal_leaves_the_numbers_that_wait():
+    child = process("follow", "--steps", "3")
+    assert child.stdin is not None and child.stdout is not None
+    child.stdin.write("".join(f"{4 + t % 7 / 10}\n" for t in range(64)).encode())
+    child.stdin.flush()
+    first = child.stdout.readline()
+    child.terminate()
+    out, err = child.communicate(timeout=PATIENCE)
+    assert (child.returncode, err) == (143, b"seqmix: stopped by SIGTERM\n")
+    assert first.endswith(b"}\n")
+    assert out == b"" or out.endswith(b"}\n")
+    assert out.count(b"\n") < 60
 
 
 def test_it_goes_on_where_it_stopped(run, tmp_path):
@@ -322,12 +352,12 @@ def test_killed_and_started_again(tmp_path):
     )
 
 
-def saved(state: Path, rows: int) -> None:
-    """Waits until the state holds so many rows."""
+def saved(state: Path, rows: int, more: bool = False) -> None:
+    """Waits until the state holds so many rows, or more."""
     from seqmix.learned import load
 
     deadline = time.monotonic() + PATIENCE
-    while not (state.exists() and load(state).rows == rows):
+    while not state.exists() or (load(state).rows < rows if more else load(state).rows != rows):
         assert time.monotonic() < deadline, "not saved"
         time.sleep(0.02)
 
@@ -337,9 +367,11 @@ def test_a_file_without_times_is_followed_from_its_end(tmp_path, run):
     log.write_text("fill\ncap\n" * 5)
     run("learn", log, "--into", state, *QUICK, "--quiet")
     with following(log, "--state", state) as live:
-        assert live.silent(1.0)
-        with log.open("a") as more:
-            more.write("jam\n")
+        deadline = time.monotonic() + PATIENCE
+        while live.silent(0.3):  # until it is there, what comes belongs to what it leaves out
+            assert time.monotonic() < deadline
+            with log.open("a") as more:
+                more.write("jam\n")
         answer = live.answer()
         assert (answer["row"], answer["value"]) == (11, "jam")
         assert live.stop() == (143, f"seqmix: {state}: going on after row 10\nseqmix: stopped by SIGTERM\n")

@@ -187,6 +187,39 @@ def test_rows_that_a_state_knows_are_left_out(tmp_path):
     assert (made.old, made.line, told) == (30, 51, [])
 
 
+def test_rows_left_out_bring_no_state(tmp_path):
+    lines = clocked(30)
+    seqmix.learn(io.BytesIO("".join(lines).encode()), into=tmp_path / "state", models=QUICK)
+    made, _ = reader(known=load(tmp_path / "state"))
+    assert made.known is not None
+    known = list(made.known.facts.alphabet.labels)
+    more = [
+        "2026-03-02T06:01,spill\n",
+        "2026-03-02T09:00,rinse\n",
+        "2026-03-02T06:02,acid\n",
+        "2026-03-02T09:01,acid\n",
+    ]
+    told = list(answered(more, [], made))
+    assert [answer["value"] for answer in told] == ["rinse", "acid"]
+    assert made.known.facts.alphabet.labels == [*known, "rinse", "acid"]
+    assert (made.old, made.line) == (2, 4)
+
+
+def test_the_rest_is_left_where_it_is_enough(tmp_path):
+    made, _ = reader()
+    piece = together(made.feed(b"".join(line.encode() for line in clocked(30)).splitlines(keepends=True)))
+    assert piece is not None and made.known is not None
+    told: list[Any] = []
+    for answer in Follower(made.known, RATE).feed(piece, enough=lambda: len(told) >= 4):
+        told.append(answer)
+    assert len(told) == 4
+    assert made.known.facts.alphabet.labels == ["fill", "cap"]
+    made.known.save(tmp_path / "state")
+    known = load(tmp_path / "state")
+    rest = answers(["2026-03-02T06:05,rinse\n", "2026-03-02T06:06,acid\n"], [], QUICK, known=known)
+    assert [answer["value"] for answer in rest] == ["rinse", "acid"]
+
+
 # ---- answers
 
 
@@ -214,10 +247,10 @@ def tank(rows: int) -> list[str]:
 
 
 LOGS: dict[str, tuple[Callable[[int], list[str]], int, list[str]]] = {
-    "states": (clocked, 140, QUICK),
-    "lines": (lambda rows: [line.split(",")[1] for line in clocked(rows)[1:]], 140, [*QUICK[:2], "match"]),
-    "numbers": (tank, 50, ["trend", "values"]),
-    "plain numbers": (lambda rows: [line.split(",")[1] for line in tank(rows)[1:]], 50, ["trend", "counts"]),
+    "states": (clocked, 100, QUICK),
+    "lines": (lambda rows: [line.split(",")[1] for line in clocked(rows)[1:]], 100, [*QUICK[:2], "match"]),
+    "numbers": (tank, 40, ["trend", "values"]),
+    "plain numbers": (lambda rows: [line.split(",")[1] for line in tank(rows)[1:]], 40, ["trend", "counts"]),
 }
 
 
