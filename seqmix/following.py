@@ -9,14 +9,15 @@ from typing import Any
 import numpy as np
 
 from seqmix.errors import DataError, SeqmixError, visible
-from seqmix.improbable import Alarms, Improbable, of_number
+from seqmix.improbable import Alarms, Improbable
 from seqmix.learned import Learned, facts_of
 from seqmix.mixture.numbers import LIGHT, NumberMixture
 from seqmix.models.laws import NumberLaw
 from seqmix.models.protocol import Ask
-from seqmix.series import Rows, open_log
+from seqmix.series import CHUNK, Alphabet, Log, Rows, open_log
+from seqmix.series.facts import Facts
 from seqmix.series.rows import Piece, join, joined
-from seqmix.surprising import RATE, in_rows, of_law, rate_of
+from seqmix.surprising import RATE, in_rows, of_law, of_value, rate_of
 
 LEVELS = (0.1, 0.9)
 """Quantiles of a number that are told, beside the median."""
@@ -24,11 +25,11 @@ LEVELS = (0.1, 0.9)
 AT_ONCE = 64
 """Rows taken together at most, where that gives the same answers sooner."""
 
-_FIRST_LINES = 2  # that the layout of a log is decided from
+_FIRST_LINES = 2  # with text, that the layout of a log is decided from at least
 
 
 class Reader:
-    """The lines of a live log as rows: its layout is decided from the first two, or known from before.
+    """The lines of a live log as rows: its layout is known from before, or the first few tell it.
 
     A line that cannot be read is told and left out, or raised where `strict`. One row is one line.
     """
@@ -51,36 +52,64 @@ class Reader:
         self.old = 0  # rows not later than what a state knows, left out
         self._latest = None if known is None else known.filler.last
         self._width: int | None = None
-        self._first: list[bytes] = []
+        self._first: list[bytes] = []  # lines while the layout is not decided
+        self._tried = 0  # of them
 
     def feed(self, lines: Sequence[bytes], end: bool = False) -> list[Piece]:
         """Rows of the next whole lines, in pieces. end: no line comes after these."""
         if self.known is None:
             self._first += lines
-            if not self._first or (len(self._first) < _FIRST_LINES and not end):
+            facts = self._layout(end)
+            if facts is None:
                 return []
             lines, self._first = self._first, []
-            with open_log(io.BytesIO(b"".join(lines[:_FIRST_LINES])), **self._reading) as log:
-                facts = facts_of(log, self._name)
-                # the rows themselves come again below
-                facts.alphabet = type(facts.alphabet)(fixed=facts.alphabet.fixed)
-                self.known = self._learn(facts)
+            self.known = self._learn(facts)
         return self._parse(lines, self.known)
+
+    def _layout(self, end: bool) -> Facts | None:
+        """What the fewest lines say of the log that hold two with text, and a value; None before they are there."""
+        if end and self._first:
+            self._tried = min(self._tried, len(self._first) - 1)
+        while self._tried < len(self._first):
+            self._tried += 1
+            some, last = self._first[: self._tried], end and self._tried == len(self._first)
+            if sum(bool(line.strip()) for line in some) < _FIRST_LINES and not last:
+                continue
+            with self._open(b"".join(some), **self._reading) as log:
+                facts = facts_of(log, self._name)
+                there = _any_value(log)
+            if there or last or self._tried == CHUNK:
+                facts.alphabet = Alphabet(fixed=facts.alphabet.fixed)  # the rows themselves come again
+                return facts
+        return None
+
+    def _open(self, text: bytes, **reading: Any) -> Log:
+        file = io.BytesIO(text)
+        file.name = self._name
+        return open_log(file, **reading)
 
     def _parse(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
         """All lines together, or where that fails one by one."""
-        labels = len(known.facts.alphabet)
+        labels, old = len(known.facts.alphabet), self.old
         try:
             pieces = self._rows(lines, known)
         except SeqmixError as error:
             known.facts.alphabet.forget(labels)
             if len(lines) > 1:
-                return [piece for line in lines for piece in self._parse([line], known)]
+                return self._one_by_one(lines, known)
             self.line += 1
             self._refuse(error)
             return []
+        if self.old > old and len(known.facts.alphabet) > labels:  # states of rows left out must not be numbered
+            known.facts.alphabet.forget(labels)
+            if len(lines) > 1:
+                self.old = old
+                return self._one_by_one(lines, known)
         self.line += len(lines)
         return pieces
+
+    def _one_by_one(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
+        return [piece for line in lines for piece in self._parse([line], known)]
 
     def _rows(self, lines: Sequence[bytes], known: Learned) -> list[Piece]:
         if known.facts.separator is not None:
@@ -88,7 +117,7 @@ class Reader:
         text = b"".join(lines)
         if not text.strip() and known.facts.format != "lines":
             return []
-        with open_log(io.BytesIO(text), after=known.facts) as log:
+        with self._open(text, after=known.facts) as log:
             pieces = list(log.pieces)
         return [piece for piece in map(self._new, pieces) if len(piece[0])]
 
@@ -133,12 +162,12 @@ class Follower:
         if known.rows:
             self._foretell(self._expected())
 
-    def feed(self, piece: Piece) -> Iterator[dict[str, Any]]:
-        """Absorb rows as logged; an answer for each of them, missing ones too."""
+    def feed(self, piece: Piece, enough: Callable[[], bool] = lambda: False) -> Iterator[dict[str, Any]]:
+        """Absorb rows as logged; an answer for each of them, missing ones too. enough: whether to leave the rest."""
         held, times = piece
         start = 0
-        while start < len(held):
-            stop = start + self._together(None if times is None else times[start:], len(held) - start)
+        while start < len(held) and not enough():
+            stop = start + self._together(held[start:], None if times is None else times[start:])
             some = held[start:stop], None if times is None else times[start:stop]
             before = self._known.mixture
             rows = joined(list(self._known.push(some)))
@@ -152,6 +181,8 @@ class Follower:
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
             yield from (answer for row, answer in enumerate(answers) if row >= logged)
             start = stop
+        if start < len(held) and self._known.facts.kind == "states":
+            self._known.facts.alphabet.forget(self._known.mixture.seen)  # the rest may come again
 
     def _set_rate(self) -> None:
         """Alarms at the rate asked for; none yet where it is in time and the cadence has not shown yet."""
@@ -163,12 +194,12 @@ class Follower:
             self._alarms = Alarms(rate)
         self._alarms.rate = rate
 
-    def _together(self, times: np.ndarray | None, rows: int) -> int:
-        """How many of the next rows may be taken together: those that come when they are expected."""
-        if self._steps > 1:
+    def _together(self, held: np.ndarray, times: np.ndarray | None) -> int:
+        """How many of the next rows may be taken together: states that come when they are expected."""
+        if self._steps > 1 or held.dtype == np.float64:
             return 1
         if times is None:
-            return min(rows, AT_ONCE)
+            return min(len(held), AT_ONCE)
         cadence = self._known.facts.cadence
         if not self._known.settled or cadence is None:
             return 1
@@ -224,7 +255,7 @@ class Follower:
             found = None
             if there and law is not None:
                 median = self._told[0]["median"] if self._told and time == self._due else law.median
-                found = of_number(law, *mixture.latest_cell(), median)
+                found = of_value(mixture, law, median)
             answer = self._answer(rows, t, value if there else None, bits, found)
             cadence = self._known.facts.cadence or 0
             heavy = self._foretell(None if time is None else time + cadence)
@@ -282,6 +313,14 @@ class Follower:
         if time is None:
             return None
         return [time + (self._known.facts.cadence or 0) * step for step in range(self._steps)]
+
+
+def _any_value(log: Log) -> bool:
+    """Whether a row has one; a row that cannot be read tells enough."""
+    try:
+        return any(bool((held == held if log.kind == "numbers" else held >= 0).any()) for held, _ in log.pieces)
+    except DataError:
+        return True
 
 
 def together(pieces: list[Piece]) -> Piece | None:

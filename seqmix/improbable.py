@@ -14,9 +14,11 @@ from seqmix.models.laws import Floats, NumberLaw
 _NEAR = 6  # cells each way from a place that stand for themselves
 _COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the one before, further out
 _SMALL = 0.02  # p-values from which on the coarse stretches will do
-_REACH = 1e3  # spreads to either side
+_REACH = 1e3  # spreads to either side, beyond the furthest centre
 _MOST = 1e13  # cells
 _LIGHT = 1e-7  # weight of the parts of a law that are left out
+_HEAVY, _PARTS, _ROUNDS = 0.01, 8, 3  # stretches of more mass are divided so, so many times at most
+_ROUNDED = 1e-12  # masses of cells below are lost in rounding, as differences
 _SAME = 1 + 1e-9  # masses that differ by rounding are alike
 
 
@@ -48,29 +50,50 @@ def of_number(law: NumberLaw, value: float, width: float, median: float) -> Impr
     """Of a value on a grid of `width`: cells around it and around the median one by one, further out in stretches."""
     law = law.lighter(_LIGHT).eased()
     middle = float(np.clip(np.rint((median - value) / width), -_MOST, _MOST))
-    reach = float(np.clip(_REACH * law.spread / width + abs(middle), 16.0, _MOST))
+    centres = np.where(law.logs, np.exp(np.minimum(law.centres, 700.0)), law.centres)
+    furthest = float(np.abs(np.append(centres, median) - value).max())
+    reach = float(np.clip((_REACH * law.spread + furthest) / width, 16.0, _MOST))
     found = _at(law, value, width, middle, reach, _COARSE)
     return found if found.p_value > _SMALL else _at(law, value, width, middle, reach, _FINE)
 
 
 def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float, growth: float) -> Improbable:
+    def below(edges: Floats) -> Floats:
+        with np.errstate(over="ignore"):
+            return law.cdf(np.clip(value + edges * width, -1e308, 1e308))
+
     out = np.arange(_NEAR + 1.0)
     while out[-1] < reach:
         out = np.append(out, np.ceil(out[-1] + (out[-1] - out[-2]) * growth))
     sides = np.concatenate([-out[::-1], out + 1.0]) - 0.5  # edges, in cells from the middle of a cell
     edges = np.unique(np.concatenate([sides, sides + middle]))
-    with np.errstate(over="ignore"):
-        below = law.cdf(np.clip(value + edges * width, -1e308, 1e308))
-    masses = np.maximum(np.diff(below, prepend=0.0, append=1.0), 0.0)
+    heights = below(edges)
+    for _ in range(_ROUNDS):
+        more = _inside(edges, np.diff(heights))
+        if not len(more):
+            break
+        edges, first = np.unique(np.concatenate([edges, more]), return_index=True)
+        heights = np.concatenate([heights, below(more)])[first]
+    masses = np.maximum(np.diff(heights, prepend=0.0, append=1.0), 0.0)
     cells = np.concatenate([[_MOST], np.diff(edges), [_MOST]])
     each = masses / cells
     came = int(np.searchsorted(edges, 0.0))  # the stretch that is the cell of the value
+    if each[came] < _ROUNDED:
+        each[came] = 2.0 ** -law.bits(value, width)
     order = np.argsort(each, kind="stable")
     levels = np.cumsum(masses[order])
     p = float(masses @ _no_likelier(each, cells, each[came] * _SAME))
     there = each > 0
     expected = float(-(masses[there] * np.log2(each[there])).sum())
     return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
+
+
+def _inside(edges: Floats, masses: Floats) -> Floats:
+    """Edges that divide the stretches of much mass: there may be a peak in one, or a slope."""
+    cells = np.diff(edges)
+    heavy = np.flatnonzero((masses > _HEAVY) & (cells > 1.0))
+    parts = np.arange(1, _PARTS) / _PARTS
+    return np.unique(np.rint(edges[heavy, None] + cells[heavy, None] * parts - 0.5) + 0.5)
 
 
 def _no_likelier(each: Floats, cells: Floats, than: float) -> Floats:

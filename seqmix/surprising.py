@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -32,7 +32,8 @@ _SECONDS = {"hour": 3600, "day": 86400, "week": 604800}
 class SurpriseRow:
     """One row with a value: loss and expected loss in bits, p-value, and whether it is surprising.
 
-    row: from 1. p_value: mass, under the law before the row, of all that was no likelier than what came.
+    row: from 1. p_value: mass, under the law before the row, of all that was no likelier than what came; 1 for the
+    first number of a log.
     """
 
     row: int
@@ -196,9 +197,15 @@ class Watch:
                 law = self._mixture.predict(None if rows.times is None else int(rows.times[t]))
             bits = float(self._mixture.absorb(rows[t : t + 1])[0])
             if law is not None:
-                yield t, bits, of_number(law, *self._mixture.latest_cell(), law.lighter(LIGHT).median)
+                yield t, bits, of_value(self._mixture, law, law.lighter(LIGHT).median)
 
 
 def of_law(law: np.ndarray, code: int, new: bool) -> Improbable:
     """law (k + 1,): masses of states, of an unseen one last; new: the state that came was not seen before."""
     return of_state(law, len(law) - 1 if new else code)
+
+
+def of_value(mixture: NumberMixture, law: NumberLaw, median: float) -> Improbable:
+    """Of the number absorbed last. law: before it. The first of a log is not improbable: nothing was known."""
+    found = of_number(law, *mixture.latest_cell(), median)
+    return found if mixture.present > 1 else replace(found, p_value=1.0)

@@ -66,7 +66,7 @@ def command(
     from seqmix.following import Follower, Reader, together
     from seqmix.learned import Learned
     from seqmix.learning import held
-    from seqmix.live import Arrivals
+    from seqmix.live import Arrivals, Stuck
 
     place = place_of(source.path)
     with ExitStack() as stack:
@@ -100,13 +100,16 @@ def command(
                     if follower is None:
                         follower = Follower(reader.known, false_alarms, steps)
                         saver.known = reader.known
-                    for told in follower.feed(piece):
-                        _write(writer, told, head)
-                        head = False
+                    for told in follower.feed(piece, enough=lambda: arrivals.stopped is not None):
                         saver.row()
+                        with arrivals.handing():
+                            _write(writer, told, head)
+                        head = False
                 if arrivals.stopped is not None:
                     break
                 saver.look()
+        except Stuck:
+            pass
         finally:
             saver.save()
         for count, what in ((reader.skipped, "rows that could not be read"), (reader.old, "rows known before")):

@@ -115,6 +115,7 @@ class Mixture(Kept):
         asleep = np.isnan(losses)
         self.asleep = asleep[-1]
         bits, before = self.weights.mix(losses, want, frozen)
+        np.maximum(bits, 0.0, out=bits)  # rounding can make a certain row a hair cheaper than nothing
         bits[rows.codes < 0] = 0.0
         self._check(bits, rows)
         if ask is not None:

@@ -15,7 +15,7 @@ from seqmix.kernels import MODE
 # Enough for a process of its own; the kernels are named, so that interpreted ones do not announce themselves.
 BARE = {"PYTHONPATH": str(Path(seqmix.__file__).parents[1]), "SEQMIX_KERNELS": MODE}
 COMMAND = [sys.executable, "-m", "seqmix"]
-READERS = ("forecast", "score", "weights", "shifts", "describe")
+READERS = ("forecast", "score", "weights", "shifts", "surprise", "describe")
 
 
 @dataclass

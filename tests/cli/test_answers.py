@@ -54,7 +54,7 @@ def on(name: str, *places: object) -> list[object]:
     return [name] if name == "models" else [name, "--quiet", *places]
 
 
-@pytest.mark.parametrize("name", HEADERS)  # shifts: this log has none, see test_shifts.py
+@pytest.mark.parametrize("name", HEADERS)  # shifts, surprise: this log has none, see the tests of both
 def test_csv_has_its_header_and_jsonl_its_keys(run, line, name):
     ended = run(*on(name, line))
     assert (ended.code, ended.err) == (0, "")
