@@ -66,7 +66,7 @@ class Broad(Kept):
         value = float(values[0])
         if not isnan(value):
             kernel.masses(
-                view(_SHAPES), view(_PEAKS), view(np.ascontiguousarray(values)), view(np.ascontiguousarray(widths)),
+                view(_SHAPES), view(_PEAKS), view(np.array(values)), view(np.array(widths)),
                 view(np.array([self.last])), view(np.array([self.scale])), view(bits),
             )  # fmt: skip
             step = abs(value - self.last)
