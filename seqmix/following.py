@@ -155,6 +155,7 @@ class Follower:
     def __init__(self, known: Learned, false_alarms: str = RATE, steps: int = 1) -> None:
         """known: what was learned before. false_alarms: as for `seqmix.surprise`. steps: that each answer foretells."""
         self._known, self._false_alarms, self._steps = known, false_alarms, steps
+        self.torn = False  # whether some of the models have learned a row that others have not
         self._alarms: Alarms | None = None
         self._told: list[dict[str, Any]] | None = None  # what was foretold for the next rows
         self._law: NumberLaw | None = None  # of the next row, at the time that is expected
@@ -169,6 +170,7 @@ class Follower:
         while start < len(held) and not enough():
             stop = start + self._together(held[start:], None if times is None else times[start:])
             some = held[start:stop], None if times is None else times[start:stop]
+            self.torn = True
             before = self._known.mixture
             rows = joined(list(self._known.push(some)))
             assert rows is not None
@@ -179,6 +181,7 @@ class Follower:
                 self._set_rate()
             logged = len(rows) - (stop - start)
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
+            self.torn = False
             yield from (answer for row, answer in enumerate(answers) if row >= logged)
             start = stop
         if start < len(held) and self._known.facts.kind == "states":

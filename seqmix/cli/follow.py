@@ -67,7 +67,9 @@ def command(
     from seqmix.learned import Learned
     from seqmix.learning import held
     from seqmix.live import Arrivals, Stuck
+    from seqmix.surprising import in_rows
 
+    in_rows(false_alarms)  # what cannot be read is said before a row is waited for
     place = place_of(source.path)
     with ExitStack() as stack:
         known = stack.enter_context(held(state)) if state else None
@@ -111,7 +113,8 @@ def command(
         except Stuck:
             pass
         finally:
-            saver.save()
+            if follower is None or not follower.torn:
+                saver.save()
         for count, what in ((reader.skipped, "rows that could not be read"), (reader.old, "rows known before")):
             if count and not source.quiet:
                 say(f"{what}, left out: {count}")
