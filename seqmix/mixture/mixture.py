@@ -182,7 +182,7 @@ class Mixture(Kept):
         laws = np.zeros((steps, len(first.masses) + 1))
         exact = steps
         heavy = 0.0
-        for i, weight in leading(self._awake_weights(time)) if steps > 1 else []:
+        for i, weight in leading(self.latest_weights[-1]) if steps > 1 else []:
             fewest = getattr(self.models[i], "fewest_paths", FEWEST_PATHS)
             walk = self.models[i].walk(steps, max(int(paths * weight), fewest), times)
             if walk is not None:
