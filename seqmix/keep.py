@@ -19,14 +19,14 @@ class Kept:
     def parts(self) -> dict[str, Kept]:
         return {}
 
-    def state(self) -> dict[str, Any]:
-        """Copies of all arrays, and the scalars."""
+    def state(self, copy: bool = True) -> dict[str, Any]:
+        """All arrays and scalars. copy: whether the arrays are copies; the part goes on changing its own."""
         out: dict[str, Any] = {}
         for name in self.kept:
             value = getattr(self, name)
-            out[name] = value.copy() if isinstance(value, np.ndarray) else value
+            out[name] = value.copy() if copy and isinstance(value, np.ndarray) else value
         for prefix, part in self.parts().items():
-            out.update({f"{prefix}.{name}": value for name, value in part.state().items()})
+            out.update({f"{prefix}.{name}": value for name, value in part.state(copy).items()})
         return out
 
     def restore(self, state: dict[str, Any]) -> None:

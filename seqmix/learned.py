@@ -191,7 +191,7 @@ class Learned:
                 arrays["tail"] = self.tail.codes if self.tail.values is None else self.tail.values
                 if self.tail.times is not None:
                     arrays["tail_times"] = self.tail.times
-            for name, value in self.mixture.state().items():
+            for name, value in self.mixture.state(copy=False).items():
                 if isinstance(value, np.generic):
                     value = value.item()
                 if isinstance(value, np.ndarray | float):

@@ -65,11 +65,12 @@ class Mixture(Kept):
     def parts(self) -> dict[str, Kept]:
         return {"weights": self.weights}
 
-    def state(self) -> dict[str, Any]:
-        """Everything learned, models included: flat, numpy arrays and plain scalars."""
-        out = super().state()
+    def state(self, copy: bool = True) -> dict[str, Any]:
+        """Everything learned, models included: flat, numpy arrays and plain scalars. copy: as for `Kept.state`."""
+        out = super().state(copy)
         for model in self.models:
-            out.update({f"model.{model.name}.{name}": value for name, value in model.state().items()})
+            kept = model.state(copy) if isinstance(model, Kept) else model.state()
+            out.update({f"model.{model.name}.{name}": value for name, value in kept.items()})
         return out
 
     def restore(self, state: dict[str, Any]) -> None:
@@ -91,6 +92,8 @@ class Mixture(Kept):
         """
         if not isinstance(rows, Rows):
             rows = Rows(np.asarray(rows, dtype=np.int32), None, self.rows)
+        if ask is not None and not len(ask.at):
+            ask = None
         if ask is None and len(rows) > CHUNK:
             starts = range(0, len(rows), CHUNK)
             return np.concatenate([self.absorb(rows[at : at + CHUNK], frozen=frozen) for at in starts])

@@ -335,9 +335,9 @@ class Compressed(StatesModel):
         self._follow()
         self.reader.rouse(left)
 
-    def state(self) -> dict[str, Any]:
+    def state(self, copy: bool = True) -> dict[str, Any]:
         self._follow()
-        return super().state()
+        return super().state(copy)
 
     def restore(self, state: dict[str, Any]) -> None:
         self._slept, self._rows_slept = [], 0

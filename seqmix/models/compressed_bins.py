@@ -77,9 +77,9 @@ class CompressedBins(Bins):
         self._follow()
         self._states.rouse(left)
 
-    def state(self) -> dict[str, Any]:
+    def state(self, copy: bool = True) -> dict[str, Any]:
         self._follow()
-        return super().state()
+        return super().state(copy)
 
     def restore(self, state: dict[str, Any]) -> None:
         self._slept, self._rows_slept = [], 0

@@ -44,9 +44,9 @@ class Table(Kept):
         self._slots = np.zeros(_DEEPEST, dtype=np.int64)
         self._known = np.zeros(_DEEPEST, dtype=np.int32)
 
-    def state(self) -> dict[str, Any]:
+    def state(self, copy: bool = True) -> dict[str, Any]:
         """The mask as far as it is used: how far the digits reach depends on what else the process has read."""
-        return super().state() | {"mask": np.trim_zeros(self.mask, "b").copy()}
+        return super().state(copy) | {"mask": np.trim_zeros(self.mask, "b").copy()}
 
     def restore(self, state: dict[str, Any]) -> None:
         super().restore(state)

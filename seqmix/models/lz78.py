@@ -10,7 +10,7 @@ from seqmix.kernels import view
 from seqmix.models.history import Codes, Fork, History, Past
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
-_MOST = 1 << 19  # phrases; then none is added any more
+_MOST = 1 << 17  # phrases; then none is added any more
 
 
 class Phrases(Setting):

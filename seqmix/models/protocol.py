@@ -188,7 +188,7 @@ class StatesModel(Kept, ABC):
         past.close()
         bits, weights = self._weights.mix(losses, asked.want, frozen)
         novel, unseen = self._novelty.absorb(codes, frozen)
-        if ask is not None:
+        if ask is not None and len(ask.at):
             ask.laws[:] = added_up(weights, laws)
             ask.laws *= (1.0 - unseen[ask.at])[:, None]
             ask.laws[:, -1] = unseen[ask.at]

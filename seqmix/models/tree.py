@@ -20,8 +20,11 @@ class Tree(StatesModel):
     source = "Willems, Shtarkov & Tjalkens 1995; Tjalkens, Willems & Shtarkov 1994"
 
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
+        most = 20 if alphabet else 19
         settings: list[Setting] = [
-            ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2),
-            ContextTree("prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=250),
+            ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2, most=most),
+            ContextTree(
+                "prior count 1/10, recent rows", _orders, alphabet=alphabet, alpha=1 / 10, limit=250, most=most
+            ),
         ]
         return settings, History(DEPTH)

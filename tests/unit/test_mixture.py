@@ -419,6 +419,13 @@ def test_unknown_name_like_no_other_gives_the_list() -> None:
     assert str(caught.value) == f"no model is called 'zzz'; there are {known}"
 
 
+@pytest.mark.parametrize(("kind", "timed"), KINDS)
+def test_asking_for_the_laws_of_no_row_is_not_asking(kind: str, timed: bool) -> None:
+    rows, asked, silent = log(kind, timed, 600), Mixture(kind=kind, timed=timed), Mixture(kind=kind, timed=timed)
+    bits = asked.absorb(rows, Ask.of(len(rows), [], int(rows.codes.max()) + 1))
+    assert np.array_equal(bits, silent.absorb(rows))
+
+
 # ---- state
 
 
