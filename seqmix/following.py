@@ -159,6 +159,7 @@ class Follower:
         self._alarms: Alarms | None = None
         self._told: list[dict[str, Any]] | None = None  # what was foretold for the next rows
         self._law: NumberLaw | None = None  # of the next row, at the time that is expected
+        self._due: int | None = None  # that time
         known.finish()
         if known.rows:
             self._foretell(self._expected())
@@ -198,13 +199,13 @@ class Follower:
         self._alarms.rate = rate
 
     def _together(self, held: np.ndarray, times: np.ndarray | None) -> int:
-        """How many of the next rows may be taken together: states that come when they are expected."""
-        if self._steps > 1 or held.dtype == np.float64:
+        """How many of the next rows may be taken together: those that come when they are expected."""
+        if self._steps > 1:
             return 1
         if times is None:
             return min(len(held), AT_ONCE)
         cadence = self._known.facts.cadence
-        if not self._known.settled or cadence is None:
+        if cadence is None:
             return 1
         steps = np.diff(times[:AT_ONCE], prepend=self._known.filler.last or 0)
         late = np.flatnonzero(steps != cadence)
@@ -245,25 +246,47 @@ class Follower:
     # ---- numbers -----------------------------------------------------------------------------------------------
 
     def _numbers(self, rows: Rows) -> list[dict[str, Any]]:
+        """Answers to rows that come one by one, or all when they are expected."""
         mixture = self._known.mixture
         assert isinstance(mixture, NumberMixture) and rows.values is not None
+        together = 1 if rows.times is not None and int(rows.times[0]) != self._due else len(rows)
         answers = []
-        for t, value in enumerate(rows.values.tolist()):
-            time = None if rows.times is None else int(rows.times[t])
-            there = value == value
-            if there and (self._law is None or time != self._due):
-                self._law = mixture.predict(time)
-            law = self._law
-            bits = float(mixture.absorb(rows[t : t + 1])[0])
-            found = None
-            if there and law is not None:
-                median = self._told[0]["median"] if self._told and time == self._due else law.median
-                found = of_value(mixture, law, median)
-            answer = self._answer(rows, t, value if there else None, bits, found)
-            cadence = self._known.facts.cadence or 0
-            heavy = self._foretell(None if time is None else time + cadence)
-            answers.append(self._complete(answer, heavy))
+        for start in range(0, len(rows), together):
+            part = rows[start : start + together]
+            assert part.values is not None
+            known = mixture.present
+            bits, laws = self._absorbed(mixture, part)
+            weights = mixture.latest_weights
+            for t, value in enumerate(part.values.tolist()):
+                time = None if part.times is None else int(part.times[t])
+                found = None
+                if value == value:
+                    law = laws[t]
+                    assert law is not None
+                    median = self._told[0]["median"] if self._told and time == self._due else law.median
+                    found = of_value(mixture, t, law, median, known)
+                    known += 1
+                answer = self._answer(part, t, value if value == value else None, bits[t], found)
+                self._due = None if time is None else time + (self._known.facts.cadence or 0)
+                ahead = laws[t + 1] if t + 1 < len(part) else None
+                if ahead is not None:
+                    self._told, heavy = [self._of_number(ahead.lighter(LIGHT))], weights[t + 1]
+                else:
+                    heavy = self._foretell(self._due)
+                answers.append(self._complete(answer, heavy))
         return answers
+
+    def _absorbed(self, mixture: NumberMixture, rows: Rows) -> tuple[list[float], Sequence[NumberLaw | None]]:
+        """Losses, and the law before each row at its time; for a single one it may have been foretold."""
+        assert rows.values is not None
+        if len(rows) > 1:
+            bits, laws = mixture.tell(rows)
+            return bits.tolist(), laws
+        time = None if rows.times is None else int(rows.times[0])
+        if not np.isnan(rows.values[0]) and (self._law is None or time != self._due):
+            self._law = mixture.predict(time)
+        law = self._law
+        return mixture.absorb(rows).tolist(), [law]
 
     def _of_number(self, law: NumberLaw) -> dict[str, Any]:
         low, median, high = law.quantile([LEVELS[0], 0.5, LEVELS[1]]).tolist()

@@ -16,7 +16,7 @@ _COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the 
 _SMALL = 0.02  # p-values from which on the coarse stretches will do
 _REACH = 1e3  # spreads to either side, beyond the furthest centre
 _MOST = 1e13  # cells
-_LIGHT = 1e-7  # weight of the parts of a law that are left out
+_LIGHT = 1e-4, 1e-7  # weight of the parts of a law that are left out: for coarse stretches, for fine ones
 _HEAVY, _PARTS, _ROUNDS = 0.01, 8, 3  # stretches of more mass are divided so, so many times at most
 _ROUNDED = 1e-12  # masses of cells below are lost in rounding, as differences
 _SAME = 1 + 1e-9  # masses that differ by rounding are alike
@@ -48,13 +48,15 @@ def of_state(masses: Floats, code: int) -> Improbable:
 
 def of_number(law: NumberLaw, value: float, width: float, median: float) -> Improbable:
     """Of a value on a grid of `width`: cells around it and around the median one by one, further out in stretches."""
-    law = law.lighter(_LIGHT).eased()
+    fine, law = law, law.lighter(_LIGHT[0]).eased()
     middle = float(np.clip(np.rint((median - value) / width), -_MOST, _MOST))
     centres = np.where(law.logs, np.exp(np.minimum(law.centres, 700.0)), law.centres)
     furthest = float(np.abs(np.append(centres, median) - value).max())
     reach = float(np.clip((_REACH * law.spread + furthest) / width, 16.0, _MOST))
     found = _at(law, value, width, middle, reach, _COARSE)
-    return found if found.p_value > _SMALL else _at(law, value, width, middle, reach, _FINE)
+    if found.p_value > _SMALL:
+        return found
+    return _at(fine.lighter(_LIGHT[1]).eased(), value, width, middle, reach, _FINE)
 
 
 def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float, growth: float) -> Improbable:

@@ -132,14 +132,15 @@ class NumberRun:
 
     def learn(self, rows: Rows) -> None:
         if len(rows):
-            self._absorb(self._ready(rows), rows)
+            mixture = self._ready(rows)
+            mixture.absorb(rows)
+            self._follow(mixture)
 
-    def _absorb(self, mixture: NumberMixture, rows: Rows, frozen: bool = False) -> tuple[Floats, list[float], Rows]:
-        """Losses of the mixture, summed losses of the baselines, and the rows with their cells."""
-        losses = mixture.absorb(rows, frozen=frozen)
-        cells, events = mixture.latest, mixture.latest_events
+    def _follow(self, mixture: NumberMixture) -> tuple[list[Floats], Rows]:
+        """Losses of the baselines on the rows that the mixture absorbed last, and these with their cells."""
+        cells = mixture.latest
         assert cells is not None
-        return losses, [float(baseline.absorb(cells).sum()) + events for baseline in self._baselines], cells
+        return [baseline.absorb(cells) + mixture.latest_events for baseline in self._baselines], cells
 
     def score(self, rows: Rows) -> None:
         if not len(rows):
@@ -150,31 +151,37 @@ class NumberRun:
         while done < len(rows):
             stride = _stride(self._scored)
             asked = self._scored % stride == 0
-            stop = done + 1 if asked else min(len(rows), done + stride - self._scored % stride)
+            stop = done + 1
+            if stride == 1 and not self._steps:
+                stop = min(len(rows), done + LAWS_ASKED - self._scored)
+            elif not asked:
+                stop = min(len(rows), done + stride - self._scored % stride)
             self._score(mixture, rows[done:stop], stride if asked else 0)
             done = stop
 
     def _score(self, mixture: NumberMixture, rows: Rows, stands_for: int) -> None:
-        """Score rows; the law of the first is looked at if it stands for some."""
-        law, time = None, None if rows.times is None else int(rows.times[0])
+        """Score rows; their laws are looked at if each stands for some."""
+        laws: list[NumberLaw] = []
         if stands_for:
             if self._steps:
-                self._look_ahead(mixture, time, stands_for)
-            law = mixture.predict(time).lighter(LIGHT)
-        losses, base, cells = self._absorb(mixture, rows, self._frozen)
+                self._look_ahead(mixture, None if rows.times is None else int(rows.times[0]), stands_for)
+            losses, laws = mixture.tell(rows, self._frozen)
+        else:
+            losses = mixture.absorb(rows, frozen=self._frozen)
+        base, cells = self._follow(mixture)
         assert cells.values is not None and cells.cells is not None
         for at, (value, width) in enumerate(zip(cells.values.tolist(), cells.cells.tolist(), strict=True)):
             if np.isnan(value):
                 continue
-            if law is not None and at == 0:
-                self._measures.learn(law, value, width, stands_for)
+            if laws:
+                self._measures.learn(laws[at].lighter(LIGHT), value, width, stands_for)
             for _, step, ahead, weight in (one for one in self._waiting if one[0] == self._scored + at):
                 self._ahead[step].learn(ahead, value, width, weight)
         self._scored += len(rows)
         self._waiting = [one for one in self._waiting if one[0] >= self._scored]
         self._rows += int((rows.codes >= 0).sum())
-        self._bits += float(losses.sum())
-        self._base_bits = [total + more for total, more in zip(self._base_bits, base, strict=True)]
+        self._bits = _added(self._bits, losses)
+        self._base_bits = [_added(total, more) for total, more in zip(self._base_bits, base, strict=True)]
         if self._on_row is not None:
             self._on_row(rows, losses)
 
@@ -213,6 +220,11 @@ class NumberRun:
                 for step, measures in enumerate(self._ahead, 1)
             ],
         )
+
+
+def _added(total: float, losses: Floats) -> float:
+    """A sum with more terms, one after the other: no cut into chunks changes it."""
+    return float(np.add.accumulate(np.append(total, losses))[-1])
 
 
 def _stride(scored: int) -> int:

@@ -190,14 +190,15 @@ class Watch:
                     known = max(known, code + 1)
 
     def _numbers(self, rows: Rows) -> Iterator[tuple[int, float, Improbable]]:
-        assert isinstance(self._mixture, NumberMixture) and rows.values is not None
-        for t, value in enumerate(rows.values.tolist()):
-            law: NumberLaw | None = None
-            if value == value:
-                law = self._mixture.predict(None if rows.times is None else int(rows.times[t]))
-            bits = float(self._mixture.absorb(rows[t : t + 1])[0])
-            if law is not None:
-                yield t, bits, of_value(self._mixture, law, law.lighter(LIGHT).median)
+        mixture = self._mixture
+        assert isinstance(mixture, NumberMixture)
+        for start in range(0, len(rows), _AT_ONCE):
+            part = rows[start : start + _AT_ONCE]
+            known = mixture.present
+            bits, laws = mixture.tell(part)
+            for t in np.flatnonzero(part.codes >= 0).tolist():
+                yield start + t, float(bits[t]), of_value(mixture, t, laws[t], laws[t].lighter(LIGHT).median, known)
+                known += 1
 
 
 def of_law(law: np.ndarray, code: int, new: bool) -> Improbable:
@@ -205,7 +206,10 @@ def of_law(law: np.ndarray, code: int, new: bool) -> Improbable:
     return of_state(law, len(law) - 1 if new else code)
 
 
-def of_value(mixture: NumberMixture, law: NumberLaw, median: float) -> Improbable:
-    """Of the number absorbed last. law: before it. The first of a log is not improbable: nothing was known."""
-    found = of_number(law, *mixture.latest_cell(), median)
-    return found if mixture.present > 1 else replace(found, p_value=1.0)
+def of_value(mixture: NumberMixture, t: int, law: NumberLaw, median: float, known: int) -> Improbable:
+    """Of row `t` of those absorbed last, under the law before it, when so many values were known.
+
+    The first of a log is not improbable: nothing was known.
+    """
+    found = of_number(law, *mixture.latest_cell(t), median)
+    return found if known else replace(found, p_value=1.0)

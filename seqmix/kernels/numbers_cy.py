@@ -452,6 +452,8 @@ def track(
     cov: cython.double[:, :, ::1],
     squares: cython.double[:, ::1],
     gain: cython.double[::1],
+    centres: cython.double[:, ::1],
+    scales: cython.double[:, ::1],
     bits: cython.double[:, ::1],
 ) -> None:
     """A bank of dynamic linear models: level, damped trend, seasonal effects (West & Harrison 1997, ch. 4 and 7).
@@ -462,7 +464,7 @@ def track(
     holds; shapes, norms (2, n): of the laws, and their log peaks; damping (settings,); seasonal: whether there are
     effects; noise (settings, 3): variances of the steps of level, trend and effects, in units of the observation's;
     mean (2, settings, dim) and squares (2, settings): both scales share cov (settings, dim, dim). The observation's
-    variance is integrated out: its law is Student's t. Writes bits (n, 2 x settings).
+    variance is integrated out: its law is Student's t. Writes centres, scales and bits (n, 2 x settings).
     """
     n: cython.Py_ssize_t = phase.shape[0]
     settings: cython.Py_ssize_t = cov.shape[0]
@@ -511,22 +513,25 @@ def track(
                 if seasonal:
                     spread += 2.0 * cov[i, 0, here] + cov[i, here, here]
                 for side in range(2):
-                    bits[t, side * settings + i] = 0.0
-                    if usable[side, t] == 0:
-                        continue
-                    if usable[side, t] == 3:
-                        bits[t, side * settings + i] = 1e4
-                        continue
                     f = mean[side, i, 0]
                     if seasonal:
                         f += mean[side, i, here]
-                    bits[t, side * settings + i] = _bits(
+                    j = side * settings + i
+                    centres[t, j] = f
+                    scales[t, j] = sqrt(spread * squares[side, i] / df[t])
+                    bits[t, j] = 0.0
+                    if usable[side, t] == 0:
+                        continue
+                    if usable[side, t] == 3:
+                        bits[t, j] = 1e4
+                        continue
+                    bits[t, j] = _bits(
                         shapes[side, t],
                         norms[side, t],
                         spans[side, t, 0],
                         spans[side, t, 1],
                         f,
-                        sqrt(spread * squares[side, i] / df[t]),
+                        scales[t, j],
                         side == 0,
                     )
                 if not usable[0, t]:
@@ -676,12 +681,14 @@ def spread_of_errors(
     rate: cython.double,
     weights: cython.double[:, ::1],
     masses: cython.double[::1],
+    told: cython.bint,
+    before: cython.double[:, ::1],
     bits: cython.double[::1],
 ) -> None:
     """A learned law of the errors of any forecast: scales times shapes, weighed apart in each phase of the clock.
 
     centres (n,): the forecasts; sizes (m,): scales; shapes, norms (shapes,). weights (phases, m x shapes):
-    fixed share at `rate` within a phase. Writes bits (n,).
+    fixed share at `rate` within a phase. Writes bits (n,) and, if `told`, the weights before each row (n, m x shapes).
     """
     n: cython.Py_ssize_t = centres.shape[0]
     m: cython.Py_ssize_t = sizes.shape[0]
@@ -695,6 +702,9 @@ def spread_of_errors(
     with cython.nogil:
         for t in range(n):
             bits[t] = 0.0
+            if told:
+                for at in range(m * kinds):
+                    before[t, at] = weights[phase[t], at]
             if not usable[t]:
                 continue
             least = 1e300

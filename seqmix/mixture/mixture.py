@@ -103,7 +103,7 @@ class Mixture(Kept):
         self._charge(bits, losses)
         return bits
 
-    def _mix(self, rows: Rows, ask: Ask | None, frozen: bool) -> tuple[Floats, Floats]:
+    def _mix(self, rows: Rows, ask: Any, frozen: bool) -> tuple[Floats, Floats]:
         """Losses of the mixture, (n,), and of each model, (n, models), what the mixture lost where it slept."""
         if not frozen:
             self._admit(rows.codes)
@@ -111,7 +111,7 @@ class Mixture(Kept):
         losses = np.empty((len(rows), len(self.models)))
 
         def one(i: int) -> None:
-            losses[:, i] = self.models[i].absorb(rows, asks[i], frozen)
+            losses[:, i] = self._learn(self.models[i], rows, asks[i], frozen)
 
         _share_out(one, len(self.models), len(rows))
         want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
@@ -123,11 +123,15 @@ class Mixture(Kept):
         self._check(bits, rows)
         if ask is not None:
             self.latest_weights = before
-            ask.laws[:] = added_up(before, [part.laws for part in asks if part is not None])
+            ask.add_up(before, [part for part in asks if part is not None])
         self.rows += len(rows)
         self.present += int((rows.codes >= 0).sum())
         self.awake += (~asleep & (rows.codes >= 0)[:, None]).sum(axis=0)
         return bits, np.where(asleep, bits[:, None], losses)
+
+    def _learn(self, model: Model, rows: Rows, ask: Any, frozen: bool) -> Floats:
+        """Losses of one model, and its laws into `ask`."""
+        return model.absorb(rows, ask, frozen)
 
     def _charge(self, bits: Floats, losses: Floats) -> None:
         """Add these losses, see `_mix`, to the sums, one row after the other: no cut into chunks changes a bit."""

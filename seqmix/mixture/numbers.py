@@ -13,7 +13,7 @@ from seqmix.mixture.mixture import Mixture
 from seqmix.mixture.weights import RATES
 from seqmix.models import registry
 from seqmix.models.laws import NumberLaw
-from seqmix.models.numbers import FIRST
+from seqmix.models.numbers import FIRST, NumbersModel, one_by_one
 from seqmix.models.protocol import Ask, Context, Floats, leading, split
 from seqmix.series.grid import Grid
 from seqmix.series.rows import CHUNK, Rows
@@ -29,6 +29,26 @@ LIGHT = 1e-4
 
 PATHS = 500
 """Most continuations a model looks at for the laws of steps ahead, where it has no closed form."""
+
+
+class NumberAsk:
+    """The law of every row of a chunk is wanted: `laws`, n of them, None where asleep."""
+
+    def __init__(self, rows: int) -> None:
+        self.want = np.arange(rows, dtype=np.int32)
+        self.laws: list[NumberLaw | None] = [None] * rows
+
+    def again(self) -> NumberAsk:
+        return NumberAsk(len(self.laws))
+
+    def add_up(self, weights: Floats, parts: Sequence[NumberAsk]) -> None:
+        """Laws mixed by weights (n, models) from those of each model."""
+        self.laws = [_mixed(line, laws) for line, *laws in zip(weights, *(part.laws for part in parts), strict=True)]
+
+
+def _mixed(weights: Floats, laws: Sequence[NumberLaw | None]) -> NumberLaw | None:
+    awake = [(weight, law) for weight, law in zip(weights, laws, strict=True) if law is not None]
+    return NumberLaw.combine([weight for weight, _ in awake], [law for _, law in awake]) if awake else None
 
 
 class NumberMixture(Mixture):
@@ -52,7 +72,7 @@ class NumberMixture(Mixture):
         self.grid = Grid(resolution)
         self.factor = 0.0  # what the models see is the log times this; 0: not chosen yet
         self.latest: Rows | None = None  # the rows absorbed last, with their cells
-        self.latest_events = 0.0  # and the bits that they told of the grid
+        self.latest_events: Floats = np.zeros(0)  # and the bits that each told of the grid
         super().__init__(models, kind="numbers", timed=self.context.timed, rates=rates, share=share)
 
     def _context(self, timed: bool) -> Context:
@@ -70,12 +90,56 @@ class NumberMixture(Mixture):
         """
         if not isinstance(rows, Rows):
             rows = Rows.of(np.array(rows, dtype=np.float64), None, self.rows)
-        assert ask is None and rows.values is not None, "laws of numbers are asked for with predict"
+        assert rows.values is not None
+        assert ask is None, "laws of numbers are asked for with tell"
         if len(rows) > CHUNK:
             starts = range(0, len(rows), CHUNK)
             return np.concatenate([self.absorb(rows[at : at + CHUNK], None, frozen) for at in starts])
-        if not len(rows):
-            return np.zeros(0)
+        return self._absorb(rows, None, frozen) if len(rows) else np.zeros(0)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw]]:
+        """`absorb`, and the law of each row before it, as `predict` would have given it at its time.
+
+        Sets latest_weights (n, models), those of the laws, and latest.
+        """
+        assert rows.values is not None
+        bits, weights = np.empty(len(rows)), np.empty((len(rows), len(self.models)))
+        shown, cells, events = np.empty((3, len(rows)))
+        laws: list[NumberLaw] = []
+        while (start := len(laws)) < len(rows):
+            # one by one: rows that the models are not shown, and those before the unit is chosen
+            with np.errstate(over="ignore"):
+                plain = self.factor * np.abs(rows.values[start : start + CHUNK]) <= HUGE / 2
+            together = int(np.argmin(np.append(plain, False))) if self.factor else 0
+            part = rows[start : start + max(together, 1)]
+            stop = start + len(part)
+            if together:
+                ask = NumberAsk(len(part))
+                bits[start:stop] = self._absorb(part, ask, frozen)
+                laws += [FIRST if law is None else self._back(law) for law in ask.laws]
+                weights[start:stop] = self.latest_weights
+            else:
+                laws.append(self.predict(None if rows.times is None else int(rows.times[start])))
+                weights[start] = self.latest_weights[-1]
+                bits[start:stop] = self._absorb(part, None, frozen)
+            assert self.latest is not None
+            shown[start:stop], cells[start:stop] = self.latest.values, self.latest.cells
+            events[start:stop] = self.latest_events
+        self.latest, self.latest_events = Rows(rows.codes, rows.times, rows.first, shown, cells), events
+        self.latest_weights = weights
+        return bits, laws
+
+    def _learn(self, model: Any, rows: Rows, ask: NumberAsk | None, frozen: bool) -> Floats:
+        if ask is None:
+            return np.asarray(model.absorb(rows, None, frozen))
+        bits, ask.laws = (
+            model.tell(rows, frozen) if isinstance(model, NumbersModel) else one_by_one(model, rows, frozen)
+        )
+        return np.asarray(bits)
+
+    def _absorb(self, rows: Rows, ask: NumberAsk | None, frozen: bool) -> Floats:
+        """Losses of at most CHUNK rows."""
+        assert rows.values is not None
         values = self.grid.snap(np.where(np.abs(rows.values) < TINY, 0.0, rows.values))
         widths, events = self.grid.cells(values)
         # what a double can hardly square is kept from the models, and charged by the law that knows nothing
@@ -85,8 +149,8 @@ class NumberMixture(Mixture):
             shown = np.where(huge, np.nan, values * self.factor)
             cells = np.clip(widths * self.factor, 1e-290, HUGE)
         self.latest = Rows(rows.codes, rows.times, rows.first, shown, cells)
-        self.latest_events = float(events.sum())
-        bits, losses = self._mix(self.latest, None, frozen)
+        self.latest_events = events
+        bits, losses = self._mix(self.latest, ask, frozen)
         alone = np.isnan(bits) & (rows.codes >= 0)  # nobody was awake
         for t in np.flatnonzero(huge | alone).tolist():
             bits[t] = losses[t] = FIRST.bits(float(rows.values[t]), float(widths[t]))
@@ -94,11 +158,11 @@ class NumberMixture(Mixture):
         self._charge(bits, losses + events[:, None])
         return bits
 
-    def latest_cell(self) -> tuple[float, float]:
-        """Value and width of the cell of the last row absorbed, in the unit of the log."""
+    def latest_cell(self, t: int) -> tuple[float, float]:
+        """Value and width of the cell of row `t` of those absorbed last, in the unit of the log."""
         assert self.latest is not None and self.latest.values is not None and self.latest.cells is not None
         factor = self.factor or 1.0
-        return float(self.latest.values[-1]) / factor, float(self.latest.cells[-1]) / factor
+        return float(self.latest.values[t]) / factor, float(self.latest.cells[t]) / factor
 
     def _choose_unit(self, values: Floats) -> None:
         """Numbers of a size far from 1 go to the models times a power of two, fixed by the first that is not 0."""
@@ -120,16 +184,14 @@ class NumberMixture(Mixture):
 
     def predict(self, time: int | None = None) -> NumberLaw:  # type: ignore[override]
         """Law of the next row, at `time` (microseconds) where the log has times."""
-        return self._back(self._mixed([model.predict(time) for model in self.models]))  # type: ignore[misc]
-
-    def _mixed(self, laws: Sequence[NumberLaw | None]) -> NumberLaw:
+        laws: list[NumberLaw | None] = [model.predict(time) for model in self.models]  # type: ignore[misc]
         if all(law is None for law in laws):
             self.latest_weights = self.weights.now()[None, :]
             return FIRST
-        weights = self.weights.of(np.array([law is not None for law in laws]))
-        self.latest_weights = weights[None, :]
-        awake = [(weight, law) for weight, law in zip(weights, laws, strict=True) if law is not None]
-        return NumberLaw.combine([weight for weight, _ in awake], [law for _, law in awake])
+        self.latest_weights = self.weights.of(np.array([law is not None for law in laws]))[None, :]
+        law = _mixed(self.latest_weights[0], laws)
+        assert law is not None
+        return self._back(law)
 
     def walk(  # type: ignore[override]
         self, steps: int, times: Sequence[int | None] | None = None, paths: int = PATHS

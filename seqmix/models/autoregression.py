@@ -66,6 +66,14 @@ class Autoregression(NumbersModel):
         return self.observed >= WAKE
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.full(len(rows), np.nan)
         cells = Cells.of(rows)
         done = 0
@@ -76,11 +84,13 @@ class Autoregression(NumbersModel):
             self._hold(cells[:done], rows[:done])
             if len(ready):
                 self._wake()
+            if laws is not None:
+                laws += [None] * done
         while done < len(rows):
             look = next(look for look in LOOKS if look > self.rows)
             stop = min(len(rows), done + look - self.rows)
             part = rows[done:stop]
-            bits[done:stop] = self._learn(cells[done:stop], part.times, frozen)
+            bits[done:stop] = self._learn(cells[done:stop], part.times, frozen, laws)
             done = stop
             if self.rows == look and not frozen:
                 self._broad.refit()
@@ -112,7 +122,7 @@ class Autoregression(NumbersModel):
         self.values, self.widths, self.times = np.zeros(0), np.zeros(0), None
         self.rows -= len(cells)
         self.observed = 0
-        self._learn(cells, times, False)
+        self._learn(cells, times, False, None)
 
     def _places(self, first: int, count: int, times: npt.NDArray[np.int64] | None) -> npt.NDArray[np.int32]:
         """(1 + phases, count): place of each row in every phase; all 0 in the first line, which is no phase."""
@@ -128,7 +138,9 @@ class Autoregression(NumbersModel):
             out.append(left + (1.0 - left) / (1.0 - fading))
         return np.ascontiguousarray(np.stack(out).astype(np.float64))
 
-    def _learn(self, cells: Cells, times: npt.NDArray[np.int64] | None, frozen: bool) -> Floats:
+    def _learn(
+        self, cells: Cells, times: npt.NDArray[np.int64] | None, frozen: bool, laws: list[NumberLaw | None] | None
+    ) -> Floats:
         n = len(cells)
         places = self._places(self.rows, n, times)
         df = self._df(self.observed + np.cumsum(cells.usable[0]) - cells.usable[0])
@@ -137,16 +149,23 @@ class Autoregression(NumbersModel):
         losses = np.concatenate([bits for bits, _, _ in learned], axis=1)
         every = np.arange(n, dtype=np.int32)
         mixed, weights = self._settings.mix(losses, every, frozen)
-        centres = self._centres(np.concatenate([forecasts for _, forecasts, _ in learned], axis=1), weights)
+        forecasts, scales = (np.concatenate(some, axis=1) for some in list(zip(*learned, strict=True))[1:])
+        centres = self._centres(forecasts, weights)
         # within what was seen so far, and some more
         seen = np.where(cells.usable[0] > 0, cells.values, np.nan)
         low = np.fmin.accumulate(np.concatenate([[self.low], seen]))
         high = np.fmax.accumulate(np.concatenate([[self.high], seen]))
         centres = np.clip(centres, *self._limits(low[:-1], high[:-1]))
         self.low, self.high = float(low[-1]), float(high[-1])
-        by_error = [mixed, *(law.learn(centres, cells, places[i]) for i, law in enumerate(self._errors))]
-        none = np.full(n, -1, dtype=np.int32)
-        bits, _ = self._kinds.mix(np.stack(by_error, axis=1), none, frozen)
+        parts = [np.empty((n if laws is not None else 1, law.weights.shape[1])) for law in self._errors]
+        by_error = [
+            law.learn(centres, cells, places[i], parts[i] if laws is not None else None)
+            for i, law in enumerate(self._errors)
+        ]
+        by_kind = np.stack([mixed, *by_error], axis=1)
+        bits, kinds = self._kinds.mix(by_kind, every if laws is not None else np.full_like(every, -1), frozen)
+        if laws is not None:
+            laws += self._laws(forecasts, scales, df, weights, centres, parts, kinds, self._broad.laws(cells.values))
         bits = with_stray(bits, self._broad.absorb(cells.values, cells.widths))
         self.rows += n
         self.observed += int(cells.usable[0].sum())
@@ -185,9 +204,53 @@ class Autoregression(NumbersModel):
             start = stop
         self._settings.keep(which)
 
+    def _laws(
+        self,
+        forecasts: Floats,
+        scales: Floats,
+        df: Floats,
+        weights: Floats,
+        centres: Floats,
+        errors: Sequence[Floats],
+        kinds: Floats,
+        broad: Sequence[NumberLaw],
+    ) -> list[NumberLaw]:
+        """Laws of n rows: of the living settings, forecasts, scales and weights (n, settings), df (fadings, n); and of
+        the errors around centres (n,), each with the weights of its parts, (n, parts); all by the weights of the kinds
+        of law, (n, kinds)."""
+        sides = [(side, side.choices[i].fading) for side in self._sides for i in side.alive]
+        middle, unit = (np.array([getattr(side, name) for side, _ in sides]) for name in ("middle", "unit"))
+        logs = np.array([side.log for side, _ in sides])
+        shapes = df[[fading for _, fading in sides]].T
+        sizes, forms = self._errors[0].forms()
+        n, parts = len(centres), len(sizes)
+        by_error = sum(kinds[:, i : i + 1] * part for i, part in enumerate(errors, 1))
+        heavy = (1.0 - STRAY) * np.concatenate([kinds[:, :1] * weights, by_error], axis=1)
+        heavy = np.concatenate([heavy, np.full((n, 1), STRAY)], axis=1)
+        heavy /= heavy.sum(axis=1, keepdims=True)
+        stray = np.array([(law.centres[0], law.scales[0], law.shapes[0]) for law in broad])
+        around = np.repeat(centres[:, None], parts, axis=1)
+        places = np.concatenate([middle + unit * forecasts, around, stray[:, :1]], axis=1)
+        spreads = np.concatenate([unit * scales, np.tile(sizes, (n, 1)), stray[:, 1:2]], axis=1)
+        shapes = np.where(logs, settled(shapes, True), shapes)
+        shapes = np.concatenate([shapes, np.tile(forms, (n, 1)), stray[:, 2:]], axis=1)
+        logs = np.concatenate([logs, np.zeros(parts + 1, dtype=np.bool_)])
+        return [NumberLaw(*row, logs) for row in zip(heavy, places, spreads, shapes, strict=True)]
+
     def predict(self, time: int | None = None) -> NumberLaw | None:
-        laws = self.walk(1, 0, [time])
-        return laws[0] if laws else None
+        if not self._awake:
+            return None
+        places = self._future(1, [time])
+        df = self._df(np.array([self.observed]))
+        weights = self._settings.now()[None, :]
+        next_rows = [
+            side.next(places[1:] if self._dates else places, df[:, 0]) for side in self._sides if len(side.alive)
+        ]
+        forecasts, scales = (np.concatenate(some, axis=1) for some in zip(*next_rows, strict=True))
+        centres = np.clip(self._centres(forecasts, weights), *self._limits(np.array([self.low]), np.array([self.high])))
+        errors = [law.weights[place] for law, place in zip(self._errors, places, strict=True)]
+        kinds, broad = self._kinds.now()[None, :], self._broad.law()
+        return self._laws(forecasts, scales, df, weights, centres, errors, kinds, [broad])[0]
 
     def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
         if not self._awake:
@@ -197,14 +260,12 @@ class Autoregression(NumbersModel):
         df = self._df(np.array([self.observed]))[:, 0]
         weights = self._settings.now()
         living = self._living()
-        chosen = list(enumerate(weights.tolist())) if steps == 1 else leading(weights)
+        chosen = leading(weights)
         means, scales = np.empty((steps, len(chosen))), np.empty((steps, len(chosen)))
         for side in self._sides:
             columns = [column for column, (at, _) in enumerate(chosen) if living[at][0] is side]
             places_there = np.array([living[chosen[column][0]][1] for column in columns], dtype=np.intp)
-            if columns and steps == 1:
-                means[:, columns], scales[:, columns] = side.next(dates, df)
-            elif columns:
+            if columns:
                 means[:, columns], scales[:, columns] = side.ahead(places_there, steps, dates, df)
         heavy = np.array([weight for _, weight in chosen])
         sides = [living[at][0] for at, _ in chosen]
@@ -215,14 +276,17 @@ class Autoregression(NumbersModel):
         )
         shapes = np.where(logs, settled(shapes, True), shapes)
         kinds = self._kinds.now()
-        laws = []
-        for step in range(steps):
+        first = self.predict(None if times is None else times[0])
+        assert first is not None
+        laws = [first]
+        for step in range(1, steps):
             plain = NumberLaw.of(middle + unit * means[step], unit * scales[step], shapes, heavy, logs)
             forecasts = np.where(logs, np.exp(np.minimum(plain.centres, 700.0)), plain.centres)
             centre = np.clip(float(heavy @ forecasts), *self._limits(np.float64(self.low), np.float64(self.high)))
             wider = float(heavy @ (scales[step] / scales[0]))
-            around = [law.law(centre, int(places[i, step]), wider) for i, law in enumerate(self._errors)]
-            sharp = NumberLaw.combine(kinds, [plain, *around])
+            by_error = sum(kinds[i + 1] * law.weights[places[i, step]] for i, law in enumerate(self._errors))
+            around = self._errors[0].law(centre, by_error, wider)
+            sharp = NumberLaw.combine([kinds[0], 1.0 - kinds[0]], [plain, around])
             laws.append(NumberLaw.combine([1.0 - STRAY, STRAY], [sharp, self._broad.law()]))
         return laws
 

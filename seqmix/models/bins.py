@@ -80,13 +80,21 @@ class Bins(NumbersModel):
         return {"base": self._base, "novelty": self._novelty, "states": self._states}
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         assert rows.values is not None
         bits = np.empty(len(rows))
         done = 0
         while done < len(rows):
             look = 1 << self.rows.bit_length()
             stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], frozen)
+            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
             self.rows += stop - done
             done = stop
             if self.rows == look:
@@ -144,10 +152,11 @@ class Bins(NumbersModel):
         """Bin of each step, -1 where there is none."""
         return np.where(np.isnan(steps), -1, np.searchsorted(self.edges, steps, side="right")).astype(np.int32)
 
-    def _learn(self, rows: Rows, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         values, widths = rows.values, rows.cells
         there = ~np.isnan(values)
+        broad = [] if laws is None else self._base.laws(values)
         base = self._base.absorb(values, widths)
         before = np.concatenate([[self.last], values[there]])[np.cumsum(there) - there]
         with np.errstate(over="ignore"):
@@ -156,6 +165,8 @@ class Bins(NumbersModel):
         if there.any():
             self.last = float(values[there][-1])
             self.width = float(widths[there][-1])
+        if laws is not None and (not self.awake or self._states.sleeps(len(rows))):
+            laws += [None] * len(rows)
         if not self.awake:
             return np.full(len(rows), nan)
         bins = self._bins(steps)
@@ -172,14 +183,19 @@ class Bins(NumbersModel):
         # a cell that is cut by an edge wants the whole law
         torn = np.flatnonzero(clear & (inside.sum(axis=1) > 1e-13 * own))
         inside[at] = own
-        wanted = Ask.of(len(rows), torn, len(self.codes)) if len(torn) else None
+        asked = torn if laws is None else np.arange(len(rows))
+        wanted = Ask.of(len(rows), asked, len(self.codes)) if len(asked) else None
         novel, unseen = self._novelty.absorb(codes, frozen)
         pooled = self._states.absorb(Rows(codes, None, self.rows), wanted, frozen) - novel
         with np.errstate(divide="ignore"):
             mass = np.log2(own) - pooled
             if wanted is not None:
-                laws = wanted.laws[:, self.codes] / (1.0 - unseen[torn])[:, None]
-                mass[torn] = np.log2((laws * inside[torn]).sum(axis=1))
+                masses = wanted.laws[wanted.want[torn]][:, self.codes] / (1.0 - unseen[torn])[:, None]
+                mass[torn] = np.log2((masses * inside[torn]).sum(axis=1))
+        if laws is not None and wanted is not None:
+            for t, law in enumerate(wanted.laws):
+                asleep_here = np.isnan(pooled[t]) or not abs(before[t]) < _LARGE
+                laws.append(None if asleep_here else self._law(law[self.codes], before[t], broad[t]))
         mass[np.isnan(pooled)] = -np.inf
         bits = -np.logaddexp2(np.log2(1 - _STRAY) + mass, np.log2(_STRAY) - base)
         return np.where(asleep | np.isnan(pooled), nan, bits)
@@ -199,11 +215,13 @@ class Bins(NumbersModel):
         law = self._states.predict() if self._sees() else None
         if law is None:
             return None
-        masses = law.masses[self.codes]
+        return self._law(law.masses[self.codes], self.last, self._base.law())
+
+    def _law(self, masses: Floats, last: float, base: NumberLaw) -> NumberLaw:
+        """Law of the row after the value `last`, from masses of the bins."""
         owner = np.searchsorted(self.starts, np.arange(len(self.centres)), side="right") - 1
-        base = self._base.law()
         return NumberLaw.of(
-            np.append(self.last + self.centres, base.centres),
+            np.append(last + self.centres, base.centres),
             np.append(self.scales, base.scales),
             np.append(np.full(len(self.scales), UNIFORM), base.shapes),
             np.append((1 - _STRAY) * (masses / masses.sum())[owner] * self.shares, _STRAY),

@@ -14,6 +14,7 @@ from seqmix.models.laws import FIRST, Floats, NumberLaw, log_peak
 _SHAPE = 2.0  # degrees of freedom: heavy tails, but a mean
 _RECENT = 256  # steps that the scale is taken from
 _SHAPES, _PEAKS = np.array([_SHAPE]), np.array([log_peak(_SHAPE)])
+_WHOLE, _PLAIN = np.ones(1), np.zeros(1, dtype=np.bool_)
 
 
 class Broad(Kept):
@@ -30,7 +31,21 @@ class Broad(Kept):
         self.steps: Floats = np.zeros(0)
 
     def law(self) -> NumberLaw:
-        return FIRST if isnan(self.last) else NumberLaw.of(self.last, self.scale, _SHAPE)
+        if isnan(self.last):
+            return FIRST
+        return NumberLaw(_WHOLE, np.array([self.last]), np.array([self.scale]), _SHAPES, _PLAIN)
+
+    def laws(self, values: Floats) -> list[NumberLaw]:
+        """The law before each of the next rows; not taken anew between them."""
+        out = []
+        law, scale = self.law(), np.array([self.scale])
+        for value in values.tolist():
+            out.append(law)
+            if not isnan(value):
+                if law is FIRST:
+                    scale = np.array([0.1 * abs(value) or float(FIRST.scales[0])])
+                law = NumberLaw(_WHOLE, np.array([value]), scale, _SHAPES, _PLAIN)
+        return out
 
     def absorb(self, values: Floats, widths: Floats) -> Floats:
         """Bits of the cell of each row under the law before it, (n,); of no meaning where a value is missing."""

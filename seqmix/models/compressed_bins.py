@@ -40,14 +40,23 @@ class CompressedBins(Bins):
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         assert rows.values is not None
-        slept = self._rows_slept + len(rows)
-        before_look = self.rows + slept < 1 << self.rows.bit_length()
-        if not frozen and before_look and (not self.awake or self._states.sleeps(slept)):
+        if not frozen and self._sleeps_through(len(rows)):
             self._slept.append(rows)
-            self._rows_slept = slept
+            self._rows_slept += len(rows)
             return np.where(np.isnan(rows.values), 0.0, np.nan)
         self._follow()
         return super().absorb(rows, ask, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        if not frozen and self._sleeps_through(len(rows)):
+            return self.absorb(rows), [None] * len(rows)
+        self._follow()
+        return super().tell(rows, frozen)
+
+    def _sleeps_through(self, rows: int) -> bool:
+        """Whether none of the next `rows` is predicted, nor are bins cut anew at one."""
+        slept = self._rows_slept + rows
+        return self.rows + slept < 1 << self.rows.bit_length() and (not self.awake or self._states.sleeps(slept))
 
     def _follow(self) -> None:
         """Follow the rows slept through: all at once costs less than one by one."""

@@ -75,13 +75,21 @@ class Counts(NumbersModel):
         return own | {f"share{i}": share for i, share in enumerate(self._shares)}
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         assert rows.values is not None
         bits = np.full(len(rows), nan)
         done = 0
         while done < len(rows):
             look = 1 << self.rows.bit_length()
             stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], frozen)
+            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
             self.rows += stop - done
             done = stop
             if self.rows == look:
@@ -106,10 +114,11 @@ class Counts(NumbersModel):
             self._weights.keep(which)
             self.alive = self.alive[which]
 
-    def _learn(self, rows: Rows, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         values, widths, n = rows.values, rows.cells, len(rows)
         there = ~np.isnan(values)
+        broad = [] if laws is None else self._base.laws(values)
         base = self._base.absorb(values, widths)
         with np.errstate(invalid="ignore"):
             count = np.where((values >= 0) & (values <= 2**31) & (values == np.floor(values)), values, -1.0)
@@ -124,11 +133,18 @@ class Counts(NumbersModel):
         if len(at):
             self.width = float(widths[at[-1]])
         if not self.awake:
+            if laws is not None:
+                laws += [None] * n
             return np.full(n, nan)
         a, b = self._follow(np.arange(self.rows, self.rows + n), rows.times, count, means)
         losses = self._losses(a, b, np.where(there, values, 0.0), widths, base)
         losses[~there | (before != 1.0)] = nan
-        return self._weights.mix(losses, np.full(n, -1, dtype=np.int32), frozen)[0]
+        every = np.arange(n, dtype=np.int32)
+        bits, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+        if laws is not None:
+            for t, heavy in enumerate(weights):
+                laws.append(self._law(heavy, a[t], b[t], broad[t]) if before[t] == 1.0 else None)
+        return bits
 
     def _follow(
         self,
@@ -161,7 +177,7 @@ class Counts(NumbersModel):
                 inside[row] = np.log2(np.exp(log_mass(a[row], b[row], some[:, None])).sum(axis=0))
         return np.asarray(-np.logaddexp2(inside + np.log2(1 - _STRAY), (np.log2(_STRAY) - base)[:, None]))
 
-    def _law(self, weights: Floats, a: Floats, b: Floats) -> NumberLaw:
+    def _law(self, weights: Floats, a: Floats, b: Floats, base: NumberLaw) -> NumberLaw:
         """Atoms as far as they weigh anything, and the broad law; weights, a, b (settings,)."""
         most = 64 + ceil(float((a / b).max()))
         while True:
@@ -171,7 +187,6 @@ class Counts(NumbersModel):
                 break
             most *= 2
         some = np.flatnonzero(masses >= _LEAST)
-        base = self._base.law()
         return NumberLaw.of(
             np.append(counts[some], base.centres),
             np.append(np.zeros(len(some)), base.scales),
@@ -194,8 +209,8 @@ class Counts(NumbersModel):
     def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
         if not self.awake or self.width != 1.0:
             return None
-        weights = self._weights.now()
-        return [self._law(weights, a, b) for a, b in zip(*self._ahead(steps, times), strict=True)]
+        weights, base = self._weights.now(), self._base.law()
+        return [self._law(weights, a, b, base) for a, b in zip(*self._ahead(steps, times), strict=True)]
 
     def sample(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None

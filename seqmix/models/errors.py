@@ -34,19 +34,30 @@ class ErrorLaw(Kept):
         parts = len(self.sizes) * len(SHAPES)
         self.weights = np.full((self._places, parts), 1.0 / parts)
 
-    def learn(self, centres: Floats, cells: Cells, places: npt.NDArray[np.int32]) -> Floats:
-        """Loss of each row around its forecast, (n,), predicted before it is learned; 0 where there is no value."""
+    def learn(
+        self, centres: Floats, cells: Cells, places: npt.NDArray[np.int32], before: Floats | None = None
+    ) -> Floats:
+        """Loss of each row around its forecast, (n,), predicted before it is learned; 0 where there is no value.
+
+        before (n, parts): filled with the weights of the parts before each row.
+        """
         bits = np.empty(len(cells))
+        told = before is not None
+        if before is None:
+            before = np.empty((1, self.weights.shape[1]))
         spans = np.ascontiguousarray(cells.spans[0])
         kernel.spread_of_errors(
             view(np.ascontiguousarray(centres)), view(spans), view(cells.usable[0]), True, view(places),
             view(self.sizes), view(SHAPES), view(_PEAKS), _RATE, view(self.weights),
-            view(np.empty(self.weights.shape[1])), view(bits),
+            view(np.empty(self.weights.shape[1])), told, view(before), view(bits),
         )  # fmt: skip
         return bits
 
-    def law(self, centre: float, place: int, wider: float = 1.0) -> NumberLaw:
-        """The law around a forecast, its scales times `wider`."""
-        shapes = np.repeat(SHAPES, len(self.sizes))
-        sizes = np.tile(self.sizes * wider, len(SHAPES))
-        return NumberLaw.of(np.full(len(sizes), centre), sizes, shapes, self.weights[place])
+    def forms(self) -> tuple[Floats, Floats]:
+        """Scale and shape of each part."""
+        return np.tile(self.sizes, len(SHAPES)), np.repeat(SHAPES, len(self.sizes))
+
+    def law(self, centre: float, weights: Floats, wider: float = 1.0) -> NumberLaw:
+        """The law around a forecast, by weights of the parts; its scales times `wider`."""
+        sizes, forms = self.forms()
+        return NumberLaw.of(np.full(len(sizes), centre), wider * sizes, forms, weights)

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
 from math import inf, lgamma, log, log1p, nan, pi
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -91,23 +92,27 @@ class NumberLaw:
         m = len(middle)
         heavy = np.full(m, 1.0 / m) if weights is None else np.atleast_1d(np.asarray(weights, dtype=np.float64))
 
-        def stretched(values: npt.ArrayLike, dtype: type) -> npt.NDArray[np.generic]:
-            return np.ascontiguousarray(np.broadcast_to(np.asarray(values, dtype=dtype), m))
+        def stretched(values: npt.ArrayLike, dtype: type) -> npt.NDArray[Any]:
+            array: npt.NDArray[Any] = np.ascontiguousarray(values, dtype=dtype)
+            return array if array.shape == (m,) else np.full(m, array, dtype=dtype)
 
         return cls(
             heavy / heavy.sum(),
             middle,
-            stretched(scales, np.float64).astype(np.float64),
-            stretched(shapes, np.float64).astype(np.float64),
-            stretched(logs, np.bool_).astype(np.bool_),
+            stretched(scales, np.float64),
+            stretched(shapes, np.float64),
+            stretched(logs, np.bool_),
         )
 
     @classmethod
     def combine(cls, weights: Sequence[float] | Floats, laws: Sequence[NumberLaw], light: float = 0.0) -> NumberLaw:
         """The mixture of several laws; `light`: its lightest parts, of so much weight in all, are left out."""
         heavy = np.concatenate([weight * law.weights for weight, law in zip(weights, laws, strict=True)])
-        order = np.argsort(heavy)
-        keep = np.sort(order[np.cumsum(heavy[order]) > light * heavy.sum()])
+        if light:
+            order = np.argsort(heavy)
+            keep = np.sort(order[np.cumsum(heavy[order]) > light * heavy.sum()])
+        else:
+            keep = np.flatnonzero(heavy)
         return cls(
             heavy[keep] / heavy[keep].sum(),
             np.concatenate([law.centres for law in laws])[keep],
@@ -118,7 +123,8 @@ class NumberLaw:
 
     @cached_property
     def _parts(self) -> tuple[memoryview, ...]:
-        norms = np.array([log_peak(shape) for shape in self.shapes.tolist()])
+        shapes, which = np.unique(self.shapes, return_inverse=True)
+        norms = np.array([log_peak(shape) for shape in shapes.tolist()])[which]
         arrays = (self.weights, self.centres, self.scales, self.shapes, norms, self.logs.astype(np.uint8))
         return tuple(view(np.ascontiguousarray(array)) for array in arrays)
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from functools import cached_property
-from typing import ClassVar
+from typing import Any, ClassVar
 
 import numpy as np
 import numpy.typing as npt
@@ -110,6 +110,10 @@ class NumbersModel(Kept, ABC):
         frozen: weights stand still; what follows the rows (levels, slopes, coefficients) goes on doing so.
         """
 
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        """`absorb` rows that all have a value, and the law of each before it, equal to what `predict` gives there."""
+        return one_by_one(self, rows, frozen)
+
     @abstractmethod
     def predict(self, time: int | None = None) -> NumberLaw | None:
         """Law of the next row, at `time` (microseconds) where the log has times; None while asleep."""
@@ -130,6 +134,15 @@ class NumbersModel(Kept, ABC):
 
     def rouse(self, left: int) -> None:
         """A forecast comes after `left` more rows: a model that sleeps may wake for it."""
+
+
+def one_by_one(model: Any, rows: Rows, frozen: bool) -> tuple[Floats, list[NumberLaw | None]]:
+    """What `NumbersModel.tell` gives, of any model of numbers."""
+    bits, laws = np.empty(len(rows)), []
+    for t in range(len(rows)):
+        laws.append(model.predict(None if rows.times is None else int(rows.times[t])))
+        bits[t : t + 1] = model.absorb(rows[t : t + 1], None, frozen)
+    return bits, laws
 
 
 class NumberBank(NumbersModel):
@@ -165,12 +178,21 @@ class NumberBank(NumbersModel):
         """The second value was learned: its error is all that is known of the scale, if at least `least` (2,)."""
 
     @abstractmethod
-    def _learn(self, cells: Cells, rows: Rows) -> Floats:
-        """Loss of each row under each living setting, (n, settings), predicted before it is learned."""
+    def _learn(self, cells: Cells) -> tuple[Floats, Floats, Floats, Floats]:
+        """Each row under each living setting, (n, settings): loss, predicted before it is learned, and the centre,
+        scale and shape of that law, on the scale of the setting."""
 
     @abstractmethod
     def _keep(self, which: npt.NDArray[np.intp]) -> None:
         """Drop all living settings but these, positions among the living."""
+
+    @abstractmethod
+    def _next(self) -> tuple[Floats, Floats, Floats]:
+        """Centre, scale and shape of the next row, (1, settings), to the last bit as `_learn` gives them."""
+
+    @abstractmethod
+    def _logs(self) -> npt.NDArray[np.bool_]:
+        """Which living settings are on the log scale."""
 
     @abstractmethod
     def _ahead(self, which: npt.NDArray[np.intp], weights: Floats, steps: int) -> list[NumberLaw]:
@@ -181,17 +203,32 @@ class NumberBank(NumbersModel):
         """Joint continuations under one living setting, (paths, steps)."""
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.zeros(len(rows))
         cells = Cells.of(rows)
         done = 0
         while self.observed < 2 and done < len(rows):
-            done += self._early(cells[done:], rows[done:], bits[done:])
+            law = self._early_law()
+            count = self._early(cells[done:], bits[done:])
+            done += count
+            if laws is not None:
+                laws += [law] * count
         while done < len(rows):
             look = next(look for look in LOOKS if look > self.rows)
             stop = min(len(rows), done + look - self.rows)
             part = cells[done:stop]
-            losses = self._learn(part, rows[done:stop])
-            mixed, _ = self._weights.mix(losses, np.full(stop - done, -1, dtype=np.int32), frozen)
+            losses, *standard = self._learn(part)
+            every = np.arange(stop - done, dtype=np.int32)
+            mixed, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+            if laws is not None:
+                laws += self._laws(standard, weights, self._broad.laws(part.values))
             mixed = with_stray(mixed, self._broad.absorb(part.values, part.widths))
             bits[done:stop] = np.where(part.usable[0], mixed, 0.0)
             self.observed += int(part.usable[0].sum())
@@ -202,12 +239,20 @@ class NumberBank(NumbersModel):
                 self._drop(self._CROWD[min(LOOKS.index(look), len(self._CROWD) - 1)])
         return bits
 
-    def _early(self, cells: Cells, rows: Rows, bits: Floats) -> int:
+    def _laws(self, standard: Sequence[Floats], weights: Floats, broad: Sequence[NumberLaw]) -> list[NumberLaw]:
+        """Laws of rows, from what all living settings say, their weights (n, settings), and the broad laws."""
+        logs = self._logs()
+        return [
+            NumberLaw.combine([1.0 - STRAY, STRAY], [NumberLaw.of(centre, scale, shape, heavy, logs), stray])
+            for centre, scale, shape, heavy, stray in zip(*standard, weights, broad, strict=True)
+        ]
+
+    def _early(self, cells: Cells, bits: Floats) -> int:
         """Learn up to and with the first or the second value, by laws that all settings share; rows done."""
         there = np.flatnonzero(cells.usable[0])
-        stop = int(there[0]) + 1 if len(there) else len(rows)
+        stop = int(there[0]) + 1 if len(there) else len(cells)
         if self.observed:
-            self._learn(cells[:stop], rows[:stop])
+            self._learn(cells[:stop])
         self.rows += stop
         if len(there):
             value, width = float(cells.values[stop - 1]), float(cells.widths[stop - 1])
@@ -236,20 +281,18 @@ class NumberBank(NumbersModel):
             self._weights.keep(which)
             self.alive = self.alive[which]
 
-    def predict(self, time: int | None = None) -> NumberLaw | None:
-        laws = self.walk(1, 0, None if time is None else [time])
-        return laws[0] if laws else None
+    def predict(self, time: int | None = None) -> NumberLaw:
+        if self.observed < 2:
+            return self._early_law()
+        return self._laws(self._next(), self._weights.now()[None, :], [self._broad.law()])[0]
 
     def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
         if self.observed < 2:
             return [self._early_law()] * steps
-        weights = self._weights.now()
-        if steps == 1:
-            laws = self._ahead(np.arange(len(weights)), weights, 1)
-        else:
-            some = leading(weights)
-            laws = self._ahead(np.array([i for i, _ in some]), np.array([weight for _, weight in some]), steps)
-        return [NumberLaw.combine([1.0 - STRAY, STRAY], [law, self._broad.law()]) for law in laws]
+        some = leading(self._weights.now())
+        laws = self._ahead(np.array([i for i, _ in some]), np.array([weight for _, weight in some]), steps)
+        first = self.predict()
+        return [first, *(NumberLaw.combine([1.0 - STRAY, STRAY], [law, self._broad.law()]) for law in laws[1:])]
 
     def sample(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None

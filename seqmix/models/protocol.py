@@ -61,6 +61,10 @@ class Ask:
         """The same rows, laws still blank."""
         return Ask(self.want, self.laws.shape[1] - 1)
 
+    def add_up(self, weights: Floats, parts: Sequence[Ask]) -> None:
+        """Laws mixed by weights (asked, models) from those of each model."""
+        self.laws[:] = added_up(weights, [part.laws for part in parts])
+
 
 @dataclass(frozen=True)
 class StatesLaw:

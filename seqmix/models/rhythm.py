@@ -73,14 +73,27 @@ class Rhythm(NumbersModel):
         return Autoregression(Context((period,), None, False))
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.full(len(rows), np.nan)
         done = 0
         while done < len(rows):
             look = max(FIRST_LOOK, 1 << self.rows.bit_length())
             stop = min(len(rows), done + look - self.rows)
             part = rows[done:stop]
-            if self._inner is not None:
+            if self._inner is not None and laws is not None:
+                bits[done:stop], told = self._inner.tell(part, frozen)
+                laws += told
+            elif self._inner is not None:
                 bits[done:stop] = self._inner.absorb(part, None, frozen)
+            elif laws is not None:
+                laws += [None] * len(part)
             assert part.values is not None and part.cells is not None
             self.values = np.concatenate([self.values, part.values])[-_REMEMBERED:]
             self.widths = np.concatenate([self.widths, part.cells])[-_REMEMBERED:]

@@ -72,13 +72,21 @@ class Rules(NumbersModel):
         self._grid = _Grid(self.recent.tolist(), self.width, self.taps)
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
         assert rows.values is not None and rows.cells is not None
         bits = np.empty(len(rows))
         done = 0
         while done < len(rows):
             look = 1 << self.rows.bit_length()
             stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows.values[done:stop], rows.cells[done:stop], frozen)
+            bits[done:stop] = self._learn(rows.values[done:stop], rows.cells[done:stop], laws, frozen)
             self.rows += stop - done
             done = stop
             if self.rows == look:
@@ -88,11 +96,12 @@ class Rules(NumbersModel):
         self.width, self.taps = self._grid.width, self._grid.taps
         return bits
 
-    def _learn(self, values: Floats, widths: Floats, frozen: bool) -> Floats:
+    def _learn(self, values: Floats, widths: Floats, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
         at: list[int] = []
         which: list[int] = []
         sure: list[float] = []
         right: list[bool] = []
+        spots: list[float] = []
         for row, (value, width) in enumerate(zip(values.tolist(), widths.tolist(), strict=True)):
             if value != value:
                 self._grid.fill(self._leading())
@@ -104,6 +113,7 @@ class Rules(NumbersModel):
                 which.append(rule)
                 sure.append(self._sure(rule))
                 right.append(hit)
+                spots.append(number * self._grid.width)
                 if not frozen:
                     (self.hits if hit else self.misses)[rule] += 1
                     if rule == _RECURRENCE:
@@ -111,12 +121,20 @@ class Rules(NumbersModel):
             self._grid.push(value, width)
             if not frozen and not self._grid.foretold:
                 self._seek()
+        broad = [] if laws is None else self._base.laws(values)
         base = self._base.absorb(values, widths)
         losses = np.full((len(values), len(_RULES)), nan)
         chance, foretold = np.array(sure), np.array(right, dtype=bool)
         inside = np.logaddexp2(np.log2(chance), np.log2(1 - chance) - base[at])
         losses[at, which] = -np.where(foretold, inside, np.log2(1 - chance) - base[at])
-        return self._weights.mix(losses, np.full(len(values), -1, dtype=np.int32), frozen)[0]
+        every = np.arange(len(values), dtype=np.int32)
+        bits, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+        if laws is not None:
+            masses = weights[at, which] * chance
+            ends = np.searchsorted(at, [every, every + 1])
+            for start, stop, law in zip(*ends.tolist(), broad, strict=True):
+                laws.append(_law(np.array(spots[start:stop]), masses[start:stop], law) if start < stop else None)
+        return bits
 
     def _sure(self, rule: int, ahead: int = 0) -> float:
         """Chance that a rule holds once more, after `ahead` more hits."""
@@ -167,15 +185,7 @@ class Rules(NumbersModel):
                 masses[step, i] = weight
         laws = []
         for spot, mass in zip(spots, masses, strict=True):
-            some = np.flatnonzero(mass)
-            laws.append(
-                NumberLaw.of(
-                    np.append(spot[some], base.centres),
-                    np.append(np.zeros(len(some)), base.scales),
-                    np.append(np.zeros(len(some)), base.shapes),
-                    np.append(mass[some], max(1.0 - mass.sum(), 0.0)),
-                )
-            )
+            laws.append(_law(spot, mass, base))
         return laws
 
     def sample(
@@ -198,6 +208,17 @@ class Rules(NumbersModel):
         if rule is None:
             return ""
         return f"{_RULES[rule]} of order {len(self._grid.taps) - 1}" if rule == _RECURRENCE else _RULES[rule]
+
+
+def _law(spots: Floats, masses: Floats, base: NumberLaw) -> NumberLaw:
+    """Atoms at the spots that have a mass, and the broad law."""
+    some = np.flatnonzero(masses)
+    return NumberLaw.of(
+        np.append(spots[some], base.centres),
+        np.append(np.zeros(len(some)), base.scales),
+        np.append(np.zeros(len(some)), base.shapes),
+        np.append(masses[some], max(1.0 - masses.sum(), 0.0)),
+    )
 
 
 class _Grid:

@@ -12,7 +12,6 @@ from seqmix.kernels import view
 from seqmix.models.laws import Floats, NumberLaw, log_peak, settled
 from seqmix.models.numbers import Cells, NumberBank
 from seqmix.models.protocol import Context
-from seqmix.series.rows import Rows
 
 LEVEL_NOISE = (0.0, 0.001, 0.01, 0.03, 0.1, 0.3, 1.0, 3.0)
 TREND_NOISE = (0.0, 1e-4, 1e-3, 1e-2, 1e-1)
@@ -92,21 +91,35 @@ class Trend(NumberBank):
     def _size_up(self, least: Floats) -> None:
         self.squares = np.maximum(self.squares, np.maximum(least[:, None] ** 2, 1e-290))
 
-    def _learn(self, cells: Cells, rows: Rows) -> Floats:
+    def _learn(self, cells: Cells) -> tuple[Floats, Floats, Floats, Floats]:
+        return self._track(cells, self.mean, self.cov, self.squares)
+
+    def _next(self) -> tuple[Floats, Floats, Floats]:
+        nothing = Cells(np.full(1, np.nan), np.ones(1))
+        return self._track(nothing, self.mean.copy(), self.cov.copy(), self.squares)[1:]
+
+    def _track(self, cells: Cells, mean: Floats, cov: Floats, squares: Floats) -> tuple[Floats, Floats, Floats, Floats]:
+        """What `_learn` gives; learns into `mean`, `cov` and `squares`."""
         n, pairs = len(cells), len(self.pairs)
         seen = self.observed + np.cumsum(cells.usable[0]) - cells.usable[0]
         df = np.maximum(seen - 1.0, 1.0)  # the first value settled the level
         shapes = np.stack([df, settled(df, True)])
         norms = np.array([[log_peak(shape) for shape in line] for line in shapes.tolist()])
         phase = ((self.rows + np.arange(n)) % max(self.period, 1)).astype(np.int32)
-        bits = np.empty((n, 2 * pairs))
+        bits, centres, scales = np.empty((3, n, 2 * pairs))
         kernel.track(
             view(cells.seen), view(cells.spans), view(cells.usable), view(phase), view(df), view(shapes), view(norms),
-            view(self._damping), self.period > 0, view(self._noise), view(self.mean), view(self.cov),
-            view(self.squares), view(np.empty(2 + self.period)), view(bits),
+            view(self._damping), self.period > 0, view(self._noise), view(mean), view(cov), view(squares),
+            view(np.empty(2 + self.period)), view(centres), view(scales), view(bits),
         )  # fmt: skip
         side, place = self._where(np.arange(len(self.alive)))
-        return bits if len(self.alive) == 2 * pairs else bits[:, side * pairs + place]
+        bits, centres, scales = (
+            every if len(side) == 2 * pairs else every[:, side * pairs + place] for every in (bits, centres, scales)
+        )
+        return bits, centres, scales, shapes[side].T
+
+    def _logs(self) -> npt.NDArray[np.bool_]:
+        return np.asarray(self.alive >= len(_grid(self.period)))
 
     def _keep(self, which: npt.NDArray[np.intp]) -> None:
         kept = np.unique(self._where(which)[1])

@@ -76,13 +76,22 @@ class Values(NumbersModel):
         self._code = {value: code for code, value in enumerate(self.known.tolist())}
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        bits = self._absorb(rows, laws, frozen)
+        return bits, laws + [None] * (len(rows) - len(laws))
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are, until the model sleeps for good."""
         assert rows.values is not None and rows.cells is not None
         bits = np.full(len(rows), nan)
         done = 0
         while done < len(rows) and not self.ended:
             look = 1 << self.rows.bit_length()
             stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], frozen)
+            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
             self.rows += stop - done
             done = stop
             if self.rows == look and not self.ended:
@@ -100,9 +109,13 @@ class Values(NumbersModel):
             self._states.absorb(Rows(self._codes, self._times, 0))
             self._codes, self._times = self._codes[:0], None
 
-    def _learn(self, rows: Rows, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
         """Loss of each row, NaN where asleep."""
         assert rows.values is not None and rows.cells is not None
+        broad = [] if laws is None or not self.awake else self._base.laws(rows.values)
+        if laws is not None and not self.awake:
+            laws += [None] * len(rows)
+            laws = None
         base = self._base.absorb(rows.values, rows.cells)
         before = len(self.known)
         codes = self._encode(rows.values, frozen)
@@ -113,7 +126,9 @@ class Values(NumbersModel):
             codes = codes[: len(rows)]
         self.observed += int((codes >= 0).sum())
         if self.begun:
-            losses = self._losses(rows, codes, before, base[: len(rows)], frozen)
+            losses, masses = self._losses(rows, codes, before, base[: len(rows)], laws is not None, frozen)
+            if laws is not None:
+                laws += [self._law(line, law) for line, law in zip(masses, broad, strict=False)]
             if self.awake:
                 bits[: len(rows)] = losses
         elif not frozen:
@@ -140,7 +155,10 @@ class Values(NumbersModel):
             self.known = np.array(list(self._code))
         return code[which.reshape(-1)]
 
-    def _losses(self, rows: Rows, codes: Codes, before: int, base: Floats, frozen: bool) -> Floats:
+    def _losses(
+        self, rows: Rows, codes: Codes, before: int, base: Floats, told: bool, frozen: bool
+    ) -> tuple[Floats, Floats]:
+        """Loss of each row, and, if `told`, its law of the states, (n, states + 1)."""
         assert rows.values is not None and rows.cells is not None
         there = codes >= 0
         # states known before each row
@@ -156,22 +174,22 @@ class Values(NumbersModel):
             some = np.flatnonzero((self.known[: seen[row]] >= low[row]) & (self.known[: seen[row]] < high[row]))
             if len(some) > (codes[row] < seen[row]):
                 mates[row] = some
-        ask = Ask.of(len(rows), list(mates), len(self.known)) if mates else None
+        asked = range(len(rows)) if told else list(mates)
+        ask = Ask.of(len(rows), asked, len(self.known))
         _, unseen = self._novelty.absorb(codes, frozen)
         inner = self._states.absorb(Rows(codes, rows.times, self.rows), ask, frozen)
         with np.errstate(divide="ignore"):
             mixed = np.logaddexp2(-inner, np.log2(unseen) - base)
         bits = np.where(codes < seen, -mixed, inner + base)
-        if ask is not None:
-            for row, law in zip(mates, ask.laws, strict=True):
-                bits[row] = -np.logaddexp2(np.log2(law[mates[row]].sum()), np.log2(unseen[row]) - base[row])
-            if not frozen:
-                self.shared += len(mates)
-        return np.where(there, bits, 0.0)
+        for row, some in mates.items():
+            law = ask.laws[ask.want[row]]
+            bits[row] = -np.logaddexp2(np.log2(law[some].sum()), np.log2(unseen[row]) - base[row])
+        if not frozen:
+            self.shared += len(mates)
+        return np.where(there, bits, 0.0), ask.laws if told else bits[:, None]
 
-    def _law(self, masses: Floats) -> NumberLaw:
+    def _law(self, masses: Floats, base: NumberLaw) -> NumberLaw:
         """Atoms at the values with masses (states + 1,), the last one for the broad law."""
-        base = self._base.law()
         some = np.flatnonzero(masses[:-1])
         return NumberLaw.of(
             np.concatenate([self.known[some], base.centres]),
@@ -184,12 +202,13 @@ class Values(NumbersModel):
         if not self.awake:
             return None
         law = self._states.predict(time)
-        return self._law(np.append(law.masses, law.unseen))
+        return self._law(np.append(law.masses, law.unseen), self._base.law())
 
     def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> list[NumberLaw] | None:
         if not self.awake:
             return None
-        return [self._law(masses) for masses in self._states.walk(steps, times, paths).laws]
+        base = self._base.law()
+        return [self._law(masses, base) for masses in self._states.walk(steps, times, paths).laws]
 
     def sample(
         self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None

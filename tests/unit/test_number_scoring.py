@@ -209,7 +209,7 @@ class TestBaselines:
         for t in range(len(values)):
             before = values[:t]
             if (~np.isnan(before)).sum() >= 2:
-                law = one._errors.law(guess(name, before), 0)
+                law = one._errors.law(guess(name, before), one._errors.weights[0])
                 assert law.weights.sum() == pytest.approx(1)
                 assert (law.weights > 0).all()
                 expected = law.bits(float(values[t]), 0.1)
@@ -225,7 +225,7 @@ class TestBaselines:
         one = blank(name)
         one.absorb(cells_of(log(60)))
         points = np.round(np.arange(-4000, 4001) * 0.1, 1)
-        law = one._errors.law(guess(name, log(60)), 0)
+        law = one._errors.law(guess(name, log(60)), one._errors.weights[0])
         inside = 0.0
         for x in points.tolist():
             inside += 2.0 ** -law.bits(x, 0.1)

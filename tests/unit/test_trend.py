@@ -130,7 +130,7 @@ class TestBoth:
         laws = model.walk(3, 0)
         assert laws is not None
         for law in laws:
-            assert law.weights[law.logs].sum() < 1e-3  # what fixed share hands back
+            assert law.weights[law.logs].sum() < 2e-3  # fixed share hands back so much in a row to all settings
 
 
 def test_a_straight_line_goes_on() -> None:
