@@ -276,6 +276,31 @@ def number_law_adds_up_and_is_charged(make: Make, rows: Rows) -> None:
                 cells_add_up(law, width)
 
 
+def laws_told_are_those_predicted(make: Make, rows: Rows) -> None:
+    """Told for many rows at once, or one by one: the same to the last bit."""
+    one, stepwise, n = make(), make(), len(rows)
+    if not hasattr(one, "tell"):
+        return
+    assert rows.values is not None
+    there = ~np.isnan(rows.values)
+    bits = np.empty(n)
+    laws: dict[int, Any] = {}
+    for a, b in pairwise(sorted({0, n, *range(37, n, 37), *(np.flatnonzero(np.diff(there)) + 1).tolist()})):
+        if there[a]:
+            bits[a:b], told = one.tell(rows[a:b])
+            laws.update(enumerate(told, a))
+        else:
+            bits[a:b] = one.absorb(rows[a:b])
+    _same(bits, make().absorb(rows), "told")
+    done = 0
+    for t in sorted({0, 1, 2, 3, 8, 31, 63, 64, 127, 128, 200, 256, 257, n - 1} & set(laws)):
+        stepwise.absorb(rows[done:t])
+        done, law, wanted = t, laws[t], stepwise.predict(_time(rows, t))
+        assert (law is None) == (wanted is None), f"row {t}: asleep for tell and for predict alike"
+        for name in ("weights", "centres", "scales", "shapes", "logs") if law is not None else ():
+            assert np.array_equal(getattr(law, name), getattr(wanted, name)), f"row {t}: other {name}"
+
+
 def cells_add_up(law: Any, width: float) -> None:
     """Masses of 2,001 cells around the median, and of the tails beyond, are 1 together."""
     middle, far = round(law.median / width), 1000
@@ -311,6 +336,7 @@ def number_steps_agree_with_sampled_paths(make: Make, rows: Rows) -> None:
 NUMBER_CHECKS: tuple[Callable[[Make, Rows], None], ...] = (
     has_what_a_model_has,
     number_law_adds_up_and_is_charged,
+    laws_told_are_those_predicted,
     any_chunking_gives_equal_bits,
     state_out_and_in_gives_equal_bits,
     number_steps_agree_with_sampled_paths,

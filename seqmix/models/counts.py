@@ -24,7 +24,7 @@ LARGEST = 1000.0
 _STRAY = 2.0**-13  # mass of the broad law in every setting
 _SMOOTH = 2.0  # visits of an even rate that each place of a period starts with
 _FAR = 30.0  # bits behind the leading setting at which others are dropped
-_LEAST = 1e-32  # mass under which atoms are left out
+_LEAST = 1e-26  # mass under which atoms are left out
 _LONGEST = 1 << 17  # atoms in a law
 
 
@@ -180,18 +180,23 @@ class Counts(NumbersModel):
     def _law(self, weights: Floats, a: Floats, b: Floats, base: NumberLaw) -> NumberLaw:
         """Atoms as far as they weigh anything, and the broad law; weights, a, b (settings,)."""
         most = 64 + ceil(float((a / b).max()))
-        while True:
-            counts = np.arange(min(most, _LONGEST), dtype=np.float64)
-            masses = np.exp(log_mass(a, b, counts[:, None])) @ weights * (1 - _STRAY)
-            if masses[-1] < _LEAST or most >= _LONGEST:
-                break
-            most *= 2
+        log_next = -a * np.log1p(1.0 / b)  # of the mass of the next count, under each setting
+        parts: list[Floats] = []
+        done = 0
+        while done < _LONGEST and not (parts and parts[-1][-1] < _LEAST):
+            counts = np.arange(done, min(most, _LONGEST), dtype=np.float64)[:, None]
+            ratios = np.log((a + counts) / ((1.0 + counts) * (1.0 + b)))  # of each mass to the one before
+            logs = np.cumsum(np.concatenate([log_next[None, :], ratios]), axis=0)
+            parts.append(np.exp(logs[:-1]) @ weights * (1 - _STRAY))
+            log_next = logs[-1]
+            done, most = most, 2 * most
+        masses = np.concatenate(parts)
         some = np.flatnonzero(masses >= _LEAST)
         return NumberLaw.of(
-            np.append(counts[some], base.centres),
+            np.append(some.astype(np.float64), base.centres),
             np.append(np.zeros(len(some)), base.scales),
             np.append(np.zeros(len(some)), base.shapes),
-            np.append(masses[some], _STRAY if most < _LONGEST else 1.0 - masses.sum()),
+            np.append(masses[some], _STRAY if done < _LONGEST else 1.0 - masses.sum()),
         )
 
     def _ahead(self, steps: int, times: Sequence[int | None] | None) -> tuple[Floats, Floats]:

@@ -27,7 +27,7 @@ _RECURRENCE, _REPEAT = 4, 5
 _REMEMBERED = 32  # values
 _USED = 24  # of them, for a recurrence
 _SHORT = 12  # up to so many values, a recurrence is sought at every row
-_FRESH = (1 / 3, 1 / 3, 1 / 2, 1 / 2, 2 / 3, 2 / 3)  # chance that a rule holds once more, before any row
+_FRESH = (1 / 10, 1 / 5, 1 / 2, 1 / 2, 2 / 3, 2 / 3)  # chance that a rule holds once more, before any row
 _STUBBORN = 1 / 40  # rows that this counts for
 
 
@@ -35,7 +35,7 @@ class Rules(NumbersModel):
     """What the last values obeyed exactly is taken to go on; asleep while they obeyed no rule.
 
     A rule that h rows bore out and m did not gives the value it foretells the mass p = (h + f/40) / (h + m + 1/40),
-    f from 1/3 to 2/3 the more values it took to find it; p is 0.99 after two hits. The rest, 1 - p, goes to a broad
+    f from 1/10 to 2/3 the more values it took to find it; p is 0.99 after two hits. The rest, 1 - p, goes to a broad
     law. A rule foretells something when it holds for the last value too: a difference of order k was the same twice;
     a recurrence of order r <= 4, shortest by the algorithm of Berlekamp and Massey over the rationals (Massey 1969),
     fits more than 2 r values; a block of 2 to 12 values came twice. Where several foretell the same value, the
@@ -44,7 +44,7 @@ class Rules(NumbersModel):
     """
 
     name = "rules"
-    prior_cost = 1.0
+    prior_cost = 2.0
     summary = "constant differences, linear recurrences and repeated blocks that hold exactly"
     source = "Massey 1969"
 

@@ -139,6 +139,15 @@ def autoregression(seed: int) -> list[float]:
     return np.round(lfilter([1], [1, -0.8], np.random.default_rng(seed).normal(size=2000)), 2).tolist()
 
 
+def walk(seed: int) -> list[float]:
+    return np.round(np.random.default_rng(seed).normal(size=2000).cumsum(), 1).tolist()
+
+
+def counts(seed: int) -> list[float]:
+    rng = np.random.default_rng(seed)
+    return rng.poisson(np.tile(rng.gamma(2.0, 3.0, size=7), 286)[:2000]).astype(float).tolist()
+
+
 def season(seed: int) -> list[float]:
     rng = np.random.default_rng(seed)
     return np.round(np.tile(4 * rng.normal(size=12), 200)[:2000] + rng.normal(size=2000), 1).tolist()
@@ -146,14 +155,16 @@ def season(seed: int) -> list[float]:
 
 def alarms(share: float) -> None:
     lines = []
-    makers: dict[str, tuple[Callable[[int], Any], dict[str, Any]]] = {
-        "states, order 1": (states_of, {}),
-        "autoregression 0.8": (autoregression, {}),
-        "season of 12 + noise": (season, {"period": 12}),
+    makers: dict[str, tuple[Callable[[int], Any], int, dict[str, Any]]] = {
+        "states, order 1": (states_of, 5, {}),
+        "autoregression 0.8": (autoregression, 20, {}),
+        "random walk": (walk, 20, {}),
+        "season of 12 + noise": (season, 20, {"period": 12}),
+        "counts, Poisson, a rate for each of 7": (counts, 20, {"period": 7}),
     }
-    for name, (make, options) in makers.items():
+    for name, (make, logs, options) in makers.items():
         surprising = rows = events = 0
-        for seed in range(max(int(5 * share), 1)):
+        for seed in range(max(int(logs * share), 1)):
             values = make(seed)
             found = seqmix.surprise(values[: int(len(values) * min(share, 1.0))], false_alarms="1/1000rows", **options)
             surprising, rows, events = surprising + found.surprising, rows + found.rows, events + len(found.events)

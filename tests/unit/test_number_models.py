@@ -13,6 +13,7 @@ from seqmix.models import registry
 from seqmix.models.compressed_bins import CompressedBins
 from seqmix.models.numbers import NumbersModel
 from seqmix.models.protocol import Context
+from seqmix.series.rows import Rows
 from seqmix.testing import CONTEXT, NUMBER_CHECKS, NUMBER_LOGS, made, small_counts, waves
 
 
@@ -29,6 +30,25 @@ def test_any_chunking_of_a_mixture_gives_equal_bits() -> None:
     one = NumberMixture(context=CONTEXT)
     assert np.array_equal(np.concatenate([one.absorb(rows[a:b]) for a, b in pairwise([0, 3, 130, 131, 900])]), whole)
     assert np.isfinite(whole).all()
+
+
+def test_laws_told_by_a_mixture_are_those_it_predicts() -> None:
+    """Rows before the unit is chosen, and those without a value, too."""
+    rows = waves(300)
+    assert rows.values is not None and rows.times is not None
+    for size in (1.0, 1e60):
+        values = rows.values * size
+        values[:2] = 0.0
+        scaled = Rows.of(values, rows.times, 0)
+        one, stepwise = NumberMixture(context=CONTEXT), NumberMixture(context=CONTEXT)
+        told = [one.tell(scaled[a:b]) for a, b in pairwise([0, 1, 60, 300])]
+        losses = np.concatenate([bits for bits, _ in told])
+        for t, law in enumerate(law for _, laws in told for law in laws):
+            if t < 70 or t % 50 == 0:
+                wanted = stepwise.predict(int(rows.times[t]))
+                assert np.array_equal(law.weights, wanted.weights), t
+                assert np.array_equal(law.centres, wanted.centres), t
+            assert stepwise.absorb(scaled[t : t + 1])[0] == losses[t], t
 
 
 def test_many_rows_at_once_are_those_rows_in_chunks() -> None:
