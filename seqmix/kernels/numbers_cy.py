@@ -336,6 +336,8 @@ def _between(a: cython.double, b: cython.double) -> cython.double:
 
 def quantiles(
     levels: cython.double[::1],
+    atoms: cython.double[::1],
+    some: cython.Py_ssize_t,
     low: cython.double,
     high: cython.double,
     plain: cython.double,
@@ -350,10 +352,14 @@ def quantiles(
 ) -> None:
     """out[i] = the least x between low and high with P(X <= x) >= levels[i]; out comes in as first guesses.
 
-    Newton's method, kept between two ends that close in, by halving where it would leave them; until a step is
-    under 1e-12 of `plain`, the least scale, and of x times `log_scale`, the least on the log scale.
+    The first `some` of `atoms`, ascending, are those of the plain scale: one of them is x, or two of them enclose it.
+    Between these, Newton's method, kept between two ends that close in, by halving where it would leave them; until
+    a step is under 1e-12 of `plain`, the least scale, and of x times `log_scale`, the least on the log scale.
     """
     i: cython.Py_ssize_t
+    k: cython.Py_ssize_t
+    first: cython.Py_ssize_t
+    last: cython.Py_ssize_t
     turn: cython.int
     a: cython.double
     b: cython.double
@@ -365,6 +371,25 @@ def quantiles(
             a = low
             b = high
             x = out[i]
+            first = 0
+            last = some
+            while first < last:
+                k = (first + last) // 2
+                if _below(atoms[k], weights, centres, scales, shapes, norms, logs) >= levels[i]:
+                    last = k
+                else:
+                    first = k + 1
+            if last < some:
+                b = min(b, atoms[last])
+                p = _below(b, weights, centres, scales, shapes, norms, logs)
+                for k in range(weights.shape[0]):
+                    if scales[k] == 0.0 and centres[k] == b and not logs[k]:
+                        p -= weights[k]
+                if p < levels[i]:
+                    out[i] = b
+                    continue
+            if last > 0:
+                a = max(a, atoms[last - 1])
             for turn in range(400):
                 if not a < x < b:
                     x = _between(a, b)

@@ -19,8 +19,8 @@ from seqmix.models.calendar import phases
 from seqmix.models.errors import ErrorLaw
 from seqmix.models.lags import FADING, choices
 from seqmix.models.laws import Floats, NumberLaw, settled
-from seqmix.models.numbers import LOOKS, STRAY, Cells, NumbersModel, with_stray
-from seqmix.models.protocol import Ask, Context, leading, split
+from seqmix.models.numbers import LOOKS, STRAY, Cells, Telling, with_stray
+from seqmix.models.protocol import Context, leading, split
 from seqmix.models.regressions import WIDE, Regressions
 from seqmix.series.rows import Rows
 
@@ -31,7 +31,7 @@ _CROWD = (160, 96, 48, 24, 16, 12)  # settings kept at rows 16, 32, 64, 128, ...
 _FAR = 30.0  # bits behind the leading one
 
 
-class Autoregression(NumbersModel):
+class Autoregression(Telling):
     """See the module. Asleep until `WAKE` values are there; those are then learned without being predicted."""
 
     name = "autoregression"
@@ -65,15 +65,7 @@ class Autoregression(NumbersModel):
     def _awake(self) -> bool:
         return self.observed >= WAKE
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
     def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.full(len(rows), np.nan)
         cells = Cells.of(rows)
         done = 0

@@ -9,11 +9,10 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.keep import Kept
-from seqmix.models.broad import Broad
 from seqmix.models.history import Codes
 from seqmix.models.laws import UNIFORM, Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import NumbersModel
+from seqmix.models.numbers import Looking
 from seqmix.models.pool import Pool
 from seqmix.models.protocol import Ask, Context, StatesModel
 from seqmix.series.rows import Rows
@@ -31,7 +30,7 @@ _LARGE = 1e300  # steps and values beyond are left to other models: the edges of
 _SPOTS = 64  # pieces of a law of later steps
 
 
-class Bins(NumbersModel):
+class Bins(Looking):
     """The step from the last value, cut into bins, foretold as a log of states by the model `pool`.
 
     At rows 128, 256, 512, ... bins are cut anew at quantiles of the last 4,096 steps, on edges of cells, and a new
@@ -50,7 +49,6 @@ class Bins(NumbersModel):
 
     def __init__(self, context: Context) -> None:
         super().__init__(context)
-        self.rows = 0
         self.awake = False
         self.last = nan  # value
         self.width = 0.0  # of the last cell
@@ -62,7 +60,6 @@ class Bins(NumbersModel):
         self.shares: Floats = np.zeros(0)
         self.starts = np.zeros(0, dtype=np.intp)
         self.codes = np.zeros(0, dtype=np.int32)  # of the bins, in order of appearance
-        self._base = Broad()
         self._states = self._first()
         self._novelty = Novelty(0)
 
@@ -79,30 +76,9 @@ class Bins(NumbersModel):
     def parts(self) -> dict[str, Kept]:
         return {"base": self._base, "novelty": self._novelty, "states": self._states}
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
-        assert rows.values is not None
-        bits = np.empty(len(rows))
-        done = 0
-        while done < len(rows):
-            look = 1 << self.rows.bit_length()
-            stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
-            self.rows += stop - done
-            done = stop
-            if self.rows == look:
-                self._base.refit()
-                if look >= _FIRST and not frozen:
-                    self._cut()
-        bits[np.isnan(rows.values)] = 0.0
-        return bits
+    def _look(self) -> None:
+        if self.rows >= _FIRST:
+            self._cut()
 
     def _cut(self) -> None:
         """Cut new bins, and teach a new pool; asleep if there is one bin only."""

@@ -12,8 +12,8 @@ import numpy.typing as npt
 
 from seqmix.compressors.protocol import Compressor
 from seqmix.models.history import Codes, Fork, History, Past
-from seqmix.models.protocol import Ask, Floats, Setting, StatesLaw, StatesModel, Walk
-from seqmix.series.rows import Rows
+from seqmix.models.protocol import Floats, Setting, StatesModel, Walk
+from seqmix.models.sleeper import Sleeper
 
 WINDOWS = (6, 8, 12, 16, 24, 32)
 """Last rows that a candidate is put after, each time compressed anew on top of the history."""
@@ -269,7 +269,7 @@ class Reader(Setting):
         return out
 
 
-class Compressed(StatesModel):
+class Compressed(Sleeper, StatesModel):
     """What makes the log shorter comes next: code lengths of a general-purpose compressor, made into a law.
 
     Each candidate is put after the last 6, 8, 12, ... rows, and compressed with the rows before as its history. With
@@ -292,56 +292,19 @@ class Compressed(StatesModel):
         super().__init__(alphabet)
 
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
-        self._slept: list[Codes] = []  # through, and not followed yet
-        self._rows_slept = 0
         self.reader = Reader(self.compressor(), alphabet, self._allowance)
         return [self.reader], History(1)
-
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        if not frozen and self.sleeps(len(rows)):
-            self._slept.append(rows.codes)
-            self._rows_slept += len(rows)
-            return np.full(len(rows), np.nan)
-        self._follow()
-        return super().absorb(rows, ask, frozen)
-
-    def _follow(self) -> None:
-        """Follow the rows slept through: all at once costs less than one by one."""
-        if self._slept:
-            codes = np.concatenate(self._slept)
-            self._slept, self._rows_slept = [], 0
-            super().absorb(Rows(codes, None, 0))
 
     def sleeps(self, rows: int) -> bool:
         return self.reader.sleeps(self._rows_slept + rows)
 
-    def predict(self, time: int | None = None) -> StatesLaw | None:  # type: ignore[override]
-        if self.sleeps(1):
-            return None
-        self._follow()
-        return super().predict(time)
-
     def walk(self, steps: int, paths: int, times: Sequence[int | None] | None = None) -> Walk:
-        self._follow()
-        return super().walk(steps, paths // _PATHS, times)
-
-    def sample(
-        self, steps: int, paths: int, rng: np.random.Generator, times: Sequence[int | None] | None = None
-    ) -> Codes:
-        self._follow()
-        return super().sample(steps, paths, rng, times)
+        walk: Walk = super().walk(steps, paths // _PATHS, times)
+        return walk
 
     def rouse(self, left: int) -> None:
         self._follow()
         self.reader.rouse(left)
-
-    def state(self, copy: bool = True) -> dict[str, Any]:
-        self._follow()
-        return super().state(copy)
-
-    def restore(self, state: dict[str, Any]) -> None:
-        self._slept, self._rows_slept = [], 0
-        super().restore(state)
 
     def again(self, codes: Codes) -> Compressed:
         """A model of other states that knows these codes, and what this one knew of code lengths and of time."""

@@ -10,11 +10,10 @@ import numpy.typing as npt
 
 from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
-from seqmix.models.broad import Broad
 from seqmix.models.calendar import phases
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import NumbersModel
-from seqmix.models.protocol import Ask, Context, split
+from seqmix.models.numbers import Looking
+from seqmix.models.protocol import Context, split
 from seqmix.series.rows import Rows
 
 DISCOUNTS = (1.0, 0.99, 0.97, 0.9, 0.8)
@@ -28,7 +27,7 @@ _LEAST = 1e-26  # mass under which atoms are left out
 _LONGEST = 1 << 17  # atoms in a law
 
 
-class Counts(NumbersModel):
+class Counts(Looking):
     """Gamma-Poisson with discount (Harvey & Fernandes 1989).
 
     The rate has a gamma law of shape a and size b. Time passing takes both down to d a and d b (never a below
@@ -53,7 +52,6 @@ class Counts(NumbersModel):
         self.settings = [(discount, -1, True) for discount in DISCOUNTS]
         for i in range(len(self.phases)):
             self.settings += [(discount, i, shared) for shared in (False, True) for discount in DISCOUNTS]
-        self.rows = 0
         self.awake = False
         self.width = 0.0  # of the last cell
         self.negative = False
@@ -62,7 +60,6 @@ class Counts(NumbersModel):
         self.alive = np.arange(len(self.settings))
         self._rates = [_Rate(self._places(i)) for i in range(len(self.settings))]
         self._shares = [_Shares(phase.places) for phase in self.phases]
-        self._base = Broad()
         self._weights = Weights([0.0 if i < 0 else 1.0 for _, i, _ in self.settings], rates=(0.002,))
 
     def _places(self, setting: int) -> int:
@@ -73,31 +70,6 @@ class Counts(NumbersModel):
         own: dict[str, Kept] = {"base": self._base, "weights": self._weights}
         own.update({f"rate{i}": self._rates[i] for i in self.alive.tolist()})
         return own | {f"share{i}": share for i, share in enumerate(self._shares)}
-
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
-        assert rows.values is not None
-        bits = np.full(len(rows), nan)
-        done = 0
-        while done < len(rows):
-            look = 1 << self.rows.bit_length()
-            stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
-            self.rows += stop - done
-            done = stop
-            if self.rows == look:
-                self._base.refit()
-                if not frozen:
-                    self._look()
-        bits[np.isnan(rows.values)] = 0.0
-        return bits
 
     def _look(self) -> None:
         fits = self.observed > 0 and self.width == 1.0 and not self.negative

@@ -152,12 +152,10 @@ class NumberLaw:
         plain, log_scale = (
             float(self.scales.min(initial=1e300, where=wide & side)) for side in (~self.logs, self.logs)
         )
-        kernel.quantiles(view(flat), low, high, plain, log_scale, *self._parts, view(out))
-        atoms = self.centres[~wide & ~self.logs]
-        if len(atoms):  # halving stops just above an atom that it means
-            nearest = atoms[np.abs(out[:, None] - atoms).argmin(axis=1)]
-            meant = (np.abs(out - nearest) <= 1e-15 * np.abs(nearest)) & (self.cdf(nearest) >= flat)
-            out = np.where(meant, nearest, out)
+        atoms = np.sort(self.centres[~wide & ~self.logs])
+        kernel.quantiles(
+            view(flat), view(np.append(atoms, 0.0)), len(atoms), low, high, plain, log_scale, *self._parts, view(out)
+        )
         order = np.argsort(flat, kind="stable")
         out[order] = np.maximum.accumulate(out[order])
         return out.reshape(levels.shape)

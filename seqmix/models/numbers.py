@@ -145,7 +145,57 @@ def one_by_one(model: Any, rows: Rows, frozen: bool) -> tuple[Floats, list[Numbe
     return bits, laws
 
 
-class NumberBank(NumbersModel):
+class Telling(NumbersModel):
+    """A model that learns rows and tells their laws in one go."""
+
+    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
+        return self._absorb(rows, None, frozen)
+
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        laws: list[NumberLaw | None] = []
+        return self._absorb(rows, laws, frozen), laws
+
+    @abstractmethod
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """`absorb`; adds the law of each row to `laws`, if there are."""
+
+
+class Looking(Telling):
+    """A model that looks at what it has learned after rows 1, 2, 4, 8, ...; beside it a broad law."""
+
+    kept: tuple[str, ...] = ("rows",)
+
+    def __init__(self, context: Context) -> None:
+        super().__init__(context)
+        self.rows = 0
+        self._base = Broad()
+
+    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        assert rows.values is not None
+        bits = np.empty(len(rows))
+        done = 0
+        while done < len(rows):
+            look = 1 << self.rows.bit_length()
+            stop = min(len(rows), done + look - self.rows)
+            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
+            self.rows += stop - done
+            done = stop
+            if self.rows == look:
+                self._base.refit()
+                if not frozen:
+                    self._look()
+        bits[np.isnan(rows.values)] = 0.0
+        return bits
+
+    @abstractmethod
+    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        """Loss of each row, NaN where asleep; adds the law of each to `laws`, if there are."""
+
+    def _look(self) -> None:
+        """After a power of two of rows."""
+
+
+class NumberBank(Telling):
     """A bank of settings, each with a standard law of the next row, mixed inside by Bayes.
 
     At rows 16, 32, 64, ... settings more than `_FAR` bits behind the leading one are dropped, and all but
@@ -202,15 +252,7 @@ class NumberBank(NumbersModel):
     def _paths(self, at: int, steps: int, paths: int, rng: np.random.Generator) -> Floats:
         """Joint continuations under one living setting, (paths, steps)."""
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
     def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.zeros(len(rows))
         cells = Cells.of(rows)
         done = 0

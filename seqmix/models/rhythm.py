@@ -9,8 +9,8 @@ import numpy as np
 from seqmix.keep import Kept
 from seqmix.models.autoregression import Autoregression
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import NumbersModel
-from seqmix.models.protocol import Ask, Context
+from seqmix.models.numbers import Telling
+from seqmix.models.protocol import Context
 from seqmix.models.regressions import fill_gaps
 from seqmix.series.rows import Rows
 
@@ -41,7 +41,7 @@ def find_period(values: Floats) -> int:
     return int(peaks[correlation[peaks] >= 0.8 * correlation[peaks].max()][0])
 
 
-class Rhythm(NumbersModel):
+class Rhythm(Telling):
     """Asleep until a period is found that the context does not name; then an `Autoregression` of that period.
 
     It looks after rows 64, 128, 256, ..., at the last 2,048 of them, and teaches those to the autoregression of a new
@@ -72,15 +72,7 @@ class Rhythm(NumbersModel):
     def _of(self, period: int) -> Autoregression:
         return Autoregression(Context((period,), None, False))
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
     def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
         bits = np.full(len(rows), np.nan)
         done = 0
         while done < len(rows):

@@ -10,10 +10,9 @@ import numpy as np
 
 from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
-from seqmix.models.broad import Broad
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import NumbersModel
-from seqmix.models.protocol import Ask, Context
+from seqmix.models.numbers import Looking
+from seqmix.models.protocol import Context
 from seqmix.models.recurrence import recurrence
 from seqmix.series.rows import Rows
 
@@ -31,7 +30,7 @@ _FRESH = (1 / 10, 1 / 5, 1 / 2, 1 / 2, 2 / 3, 2 / 3)  # chance that a rule holds
 _STUBBORN = 1 / 40  # rows that this counts for
 
 
-class Rules(NumbersModel):
+class Rules(Looking):
     """What the last values obeyed exactly is taken to go on; asleep while they obeyed no rule.
 
     A rule that h rows bore out and m did not gives the value it foretells the mass p = (h + f/40) / (h + m + 1/40),
@@ -52,7 +51,6 @@ class Rules(NumbersModel):
 
     def __init__(self, context: Context) -> None:
         super().__init__(context)
-        self.rows = 0
         self.recent: Floats = np.zeros(0)  # the last values that follow each other
         self.width = 0.0  # of their grid
         self.taps = np.zeros(0, dtype=np.int64)  # of the recurrence: denominator, then the factors of lags 1, 2, ...
@@ -60,7 +58,6 @@ class Rules(NumbersModel):
         self.misses = np.zeros(len(_RULES), dtype=np.int64)
         self.wait = 1  # rows between this search for a recurrence and the next
         self.pause = 0  # rows before the next search
-        self._base = Broad()
         self._weights = Weights(_COSTS, rates=())
         self._grid = _Grid([], 0.0, self.taps)
 
@@ -71,32 +68,9 @@ class Rules(NumbersModel):
         super().restore(state)
         self._grid = _Grid(self.recent.tolist(), self.width, self.taps)
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
-
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are."""
+    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
-        bits = np.empty(len(rows))
-        done = 0
-        while done < len(rows):
-            look = 1 << self.rows.bit_length()
-            stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows.values[done:stop], rows.cells[done:stop], laws, frozen)
-            self.rows += stop - done
-            done = stop
-            if self.rows == look:
-                self._base.refit()
-        bits[np.isnan(rows.values)] = 0.0
-        self.recent = np.array(self._grid.values)
-        self.width, self.taps = self._grid.width, self._grid.taps
-        return bits
-
-    def _learn(self, values: Floats, widths: Floats, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+        values, widths = rows.values, rows.cells
         at: list[int] = []
         which: list[int] = []
         sure: list[float] = []
@@ -121,6 +95,8 @@ class Rules(NumbersModel):
             self._grid.push(value, width)
             if not frozen and not self._grid.foretold:
                 self._seek()
+        self.recent = np.array(self._grid.values)
+        self.width, self.taps = self._grid.width, self._grid.taps
         broad = [] if laws is None else self._base.laws(values)
         base = self._base.absorb(values, widths)
         losses = np.full((len(values), len(_RULES)), nan)

@@ -11,11 +11,10 @@ import numpy as np
 import numpy.typing as npt
 
 from seqmix.keep import Kept
-from seqmix.models.broad import Broad
 from seqmix.models.history import Codes
 from seqmix.models.laws import Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import NumbersModel
+from seqmix.models.numbers import Looking
 from seqmix.models.protocol import Ask, Context
 from seqmix.series.rows import Rows
 
@@ -28,7 +27,7 @@ MOST = 256
 _STATES = ("markov", "pool")  # models of the states; all others together bring nothing more, at twice the cost
 
 
-class Values(NumbersModel):
+class Values(Looking):
     """A mixture of models of states over the values as they first appeared, and a chance of a value never seen.
 
     With P the law of the states, u the chance of a new one and B the broad law, the mass of a cell is
@@ -46,7 +45,6 @@ class Values(NumbersModel):
 
     def __init__(self, context: Context) -> None:
         super().__init__(context)
-        self.rows = 0
         self.observed = 0  # rows with a value
         self.shared = 0  # rows whose cell held more than one value known
         self.known: Floats = np.zeros(0)  # values by code
@@ -55,7 +53,6 @@ class Values(NumbersModel):
         self.ended = False
         self._codes: Codes = np.zeros(0, dtype=np.int32)  # rows put by
         self._times: npt.NDArray[np.int64] | None = None
-        self._base = Broad()
         self._novelty = Novelty(0)
         self._code: dict[float, int] = {}
 
@@ -75,33 +72,9 @@ class Values(NumbersModel):
         super().restore(state)
         self._code = {value: code for code, value in enumerate(self.known.tolist())}
 
-    def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
-        return self._absorb(rows, None, frozen)
-
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        bits = self._absorb(rows, laws, frozen)
-        return bits, laws + [None] * (len(rows) - len(laws))
-
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """`absorb`; adds the law of each row to `laws`, if there are, until the model sleeps for good."""
-        assert rows.values is not None and rows.cells is not None
-        bits = np.full(len(rows), nan)
-        done = 0
-        while done < len(rows) and not self.ended:
-            look = 1 << self.rows.bit_length()
-            stop = min(len(rows), done + look - self.rows)
-            bits[done:stop] = self._learn(rows[done:stop], laws, frozen)
-            self.rows += stop - done
-            done = stop
-            if self.rows == look and not self.ended:
-                self._base.refit()
-                if not frozen:
-                    self._look()
-        bits[np.isnan(rows.values)] = 0.0
-        return bits
-
     def _look(self) -> None:
+        if self.ended:
+            return
         self.awake = 0 < 3 * (len(self.known) + self.shared) <= self.observed
         if self.awake and not self.begun:
             self.begun = True
@@ -110,16 +83,17 @@ class Values(NumbersModel):
             self._codes, self._times = self._codes[:0], None
 
     def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
-        """Loss of each row, NaN where asleep."""
         assert rows.values is not None and rows.cells is not None
-        broad = [] if laws is None or not self.awake else self._base.laws(rows.values)
+        bits = np.full(len(rows), nan)
         if laws is not None and not self.awake:
             laws += [None] * len(rows)
             laws = None
+        if self.ended:
+            return bits
+        broad = [] if laws is None else self._base.laws(rows.values)
         base = self._base.absorb(rows.values, rows.cells)
         before = len(self.known)
         codes = self._encode(rows.values, frozen)
-        bits = np.full(len(rows), nan)
         if len(self.known) > MOST:
             self.ended = True
             rows = rows[: int(np.argmax(codes == MOST)) + 1]
@@ -129,6 +103,7 @@ class Values(NumbersModel):
             losses, masses = self._losses(rows, codes, before, base[: len(rows)], laws is not None, frozen)
             if laws is not None:
                 laws += [self._law(line, law) for line, law in zip(masses, broad, strict=False)]
+                laws += [None] * (len(bits) - len(rows))
             if self.awake:
                 bits[: len(rows)] = losses
         elif not frozen:
