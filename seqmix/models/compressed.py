@@ -34,6 +34,7 @@ _RATE = 0.02  # of the factors, along the gradient of the loss
 _SHARE = 0.01  # a row, back to even trust in the code lengths and the plain frequencies
 _WIDE = 192  # states from which on a letter takes two bytes; a stretch adds at most 32
 _LONGEST_SLEEP = 2048 * STRETCH  # rows before it is decided again
+_FEWEST = 8  # rows that it is roused for
 _PATHS = 10  # continuations of other models for which one is looked at here
 _WAYS = 200  # different continuations whose laws are looked at, the commonest; others have the plain frequencies
 
@@ -112,9 +113,12 @@ class Reader(Setting):
         return _ROW + len(self.windows) * candidates * self._compressor.cost
 
     def rouse(self, left: int) -> None:
-        """Be awake on the last of the next `left` rows, as many as the first allowance pays for, and from then on."""
+        """Be awake on the last of the next `left` rows, as many as the first allowance pays for, and from then on; but
+        not where it pays for so few that they would tell nothing."""
         if self._allowance is not None:
-            self.roused = self.rows + left - min(int(self._allowance.start / self._row_cost()), left)
+            paid = int(self._allowance.start / self._row_cost())
+            if paid >= _FEWEST:
+                self.roused = self.rows + left - min(paid, left)
 
     # ---- along the rows ------------------------------------------------------------------------------------
 
