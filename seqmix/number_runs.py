@@ -16,14 +16,14 @@ from seqmix.runs import BORNE_OUT, MOST
 
 Floats = npt.NDArray[np.float64]
 
-SHARES = (0.0, 1.0, 0.5, 0.8, 0.95)
+SHARES = (0.0, 1.0, 0.3, 0.5, 0.65, 0.8, 0.9, 0.95)
 """Shares of the last value that a row may go on from: 0 a constant level, 1 a constant law of the step."""
 
-PACES = (0.1, 0.3)
+PACES = (0.05, 0.1, 0.3, 0.6)
 """Paces of means of the rows so far, new ones counting more, that a row may go on from instead."""
 
-COSTS = np.array([0.0, 4.0, 8.0, 8.0, 8.0, 8.0, 8.0])
-"""Prior cost of each share and pace in bits. All but the first two can take a shift of level for a slow return."""
+COSTS = np.array([0.0, 4.0, *[10.0] * 6, 5.0, 5.0, 10.0, 10.0])
+"""Prior cost of each share and pace in bits. Those of 10 are soon at a new level, and so could explain a shift away."""
 
 LONGEST = 1500
 """Rows of the longest period looked at; of those that fit, the two longest are."""
@@ -40,8 +40,8 @@ FIRST = 4
 MEAN_ROWS = 0.2
 """Rows that the prior mean of a fresh run counts for."""
 
-SHAPE = 2.0
-"""Shape of the prior of the precision: a fresh run takes the spread before for as good as four rows."""
+SHAPE = 4.0
+"""Shape of the prior of the precision: a fresh run takes the spread before for as good as eight rows."""
 
 OUTLIERS = 0.01
 """Part of every law that is broad: no row speaks louder than this lets it."""
@@ -55,7 +55,7 @@ _HEAVY_RATIO = lgamma((TAILS + 1.0) / 2.0) - lgamma(TAILS / 2.0)
 
 
 class NumberWays:
-    """The explanations of numbers; periods in rows. `cell` of a row is its width on the grid, and the least spread."""
+    """The explanations of numbers; periods in rows. `cell`, the width of a row's cell, is twice the least spread."""
 
     def __init__(self, periods: tuple[int, ...] = ()) -> None:
         self._profiles = [Profile(period) for period in sorted(p for p in periods if p <= LONGEST)[-2:]]
@@ -64,6 +64,10 @@ class NumberWays:
         part = self._bases * len(COSTS)
         explanations = 3 * part
         self._plain, self._log, self._heavy = (slice(part * i, part * (i + 1)) for i in range(3))
+        # Fisher information of a row about the mean and about the scale, that of a normal law 1
+        self._mean_told, self._scale_told = np.ones((2, explanations))
+        self._mean_told[self._heavy] = (TAILS + 1.0) / (TAILS + 3.0)
+        self._scale_told[self._heavy] = TAILS / (TAILS + 3.0)
         self._positive = True
         self._shifts = 0
         self._set_prior()
@@ -101,8 +105,8 @@ class NumberWays:
         target = (bases[:, None] - before).reshape(-1)
         self._target = np.concatenate([target, target[self._plain]])
         self._means += (bases[:, None] - self._means) * PACES
-        self._floor[:] = self.cell**2 / 12.0
-        self._floor[self._log] = (self.cell / value) ** 2 / 12.0 if self._positive else 1.0
+        self._floor[:] = self.cell**2 / 4.0
+        self._floor[self._log] = (self.cell / value) ** 2 / 4.0 if self._positive else 1.0
         self._last = bases
         self._value = value
         for profile in self._profiles:
@@ -128,10 +132,10 @@ class NumberWays:
     def begin(self, run: int, running: int) -> None:
         if run == running:
             mean, variance = self._first
-            self._mean[run], self._rest[run] = mean, variance * SHAPE
+            self._mean[run], self._rest[run] = mean, variance * SHAPE * self._scale_told
         else:
             self._mean[run] = self._mean[running]
-            self._rest[run] = self._rest[running] / (SHAPE + self._count[running] / 2.0) * SHAPE
+            self._rest[run] = self._variance(running) * SHAPE * self._scale_told
         self._count[run] = 0.0
         self._ratio[run] = lgamma(SHAPE + 0.5) - lgamma(SHAPE)
         self._total[run] = 0.0
@@ -141,7 +145,7 @@ class NumberWays:
         self._look(value)
         rows, shape = self._rows_and_shape(runs)
         scale = self._rest[:runs] * (rows + 1.0) / (rows * shape)  # squared
-        half = np.broadcast_to(shape, scale.shape).copy()  # of the degrees of freedom
+        half = shape.copy()  # of the degrees of freedom
         half[:, self._heavy] = TAILS / 2.0
         ratio = np.broadcast_to(self._ratio[:runs, None], scale.shape).copy()
         ratio[:, self._heavy] = _HEAVY_RATIO
@@ -149,7 +153,7 @@ class NumberWays:
         off = self._target - self._mean[:runs]
         logs = ratio - 0.5 * np.log(pi * spread) - (half + 0.5) * np.log1p(off * off / spread)
         broad = self._broad
-        wide = 4.0 * self._rest[broad] / (SHAPE + self._count[broad] / 2.0)
+        wide = 4.0 * self._variance(broad)
         outlier = 1.0 / (pi * np.sqrt(wide) * (1.0 + (self._target - self._mean[broad]) ** 2 / wide))
         bits = -np.log((1.0 - OUTLIERS) * np.exp(logs) + OUTLIERS * outlier) / _LN2
         if self._positive:
@@ -160,21 +164,29 @@ class NumberWays:
 
     def _rows_and_shape(self, runs: int) -> tuple[Floats, Floats]:
         count = self._count[:runs, None]
-        return count + MEAN_ROWS, SHAPE + count / 2.0
+        return MEAN_ROWS + count * self._mean_told, self._shape(count)
+
+    def _shape(self, count: Floats) -> Floats:
+        return (SHAPE + count / 2.0) * self._scale_told
+
+    def _variance(self, run: int) -> Floats:
+        variance: Floats = self._rest[run] / self._shape(self._count[run])
+        return variance
 
     def learn(self, runs: int) -> None:
         rows, shape = self._rows_and_shape(runs)
         scale = np.sqrt(self._rest[:runs] * (rows + 1.0) / (rows * shape))
         off = (self._target - self._mean[:runs]) / scale
         far = off[:, self._heavy]
-        less = (TAILS + 1.0) / (TAILS + far * far)  # a step of EM for a Student t law: outliers count for less
+        less = (TAILS + 1.0) / (TAILS + far * far)  # outliers count for less
         np.clip(off, -FAR, FAR, out=off)
         square = off * off
-        square[:, self._heavy] = less * far * far
+        # a step of Fisher scoring for a Student t law: twice that of EM, which forgets a wrong scale too slowly
+        square[:, self._heavy] = less * far * far - 1.0 + self._scale_told[self._heavy]
         off[:, self._heavy] = less * far
         off *= scale
         square *= scale * scale
-        self._mean[:runs] += off / (rows + 1.0)
+        self._mean[:runs] += off / (rows + self._mean_told)
         self._rest[:runs] += 0.5 * (square * rows / (rows + 1.0) + self._floor)
         self._ratio[:runs] = np.log(shape[:, 0]) - self._ratio[:runs]
         self._count[:runs] += 1.0

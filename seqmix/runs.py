@@ -22,7 +22,12 @@ RECENT = 40
 BORNE_OUT = 5
 """Rows that a fresh run has predicted, at least, before it counts, or a period: what is over sooner is an exception."""
 
+KEPT = 25
+"""Rows after which ways are no longer new: too little is known of new ones, so a start k rows after theirs counts
+(k / KEPT)^3 as much."""
+
 _LEAST = 1e-60  # weight of an explanation within a run: what was ruled out can come back
+_NEW = np.array([-np.inf, *(3.0 * np.log2(np.arange(1, KEPT + 1) / KEPT))])  # of a start after so many rows, in bits
 
 
 class Ways(Protocol):
@@ -72,7 +77,8 @@ class Runs:
 
     odds: probability that a shift above it is there, to that of none, at which it is declared. The odds of a shift
     now are the mean of 2^gain over all starts since the last one: as many bits as a fresh run lost less than the
-    running one on the rows since its start. Starts that were dropped count as no gain at all.
+    running one on the rows since its start. Starts soon after the last shift count less, and those that were dropped
+    as no gain at all.
     """
 
     def __init__(self, ways: Ways, odds: float) -> None:
@@ -109,11 +115,12 @@ class Runs:
         self._age[:runs] += 1
         self.ways.learn(runs)
         gains = self._gains()
-        gains[self._running] = -np.inf
-        best = int(gains.argmax())
-        borne_out = self._age[:runs] >= self.ways.borne_out
+        ages = self._age[:runs]
+        bits = gains + _NEW[np.minimum(self._age[self._running] - ages, KEPT)]
+        best = int(bits.argmax())
+        borne_out = ages >= self.ways.borne_out
         # a log of bits that no float can hold is a shift all the same
-        self.odds = float(np.exp2(np.minimum(gains[borne_out], 1000.0)).sum()) / max(self._candidates, 1)
+        self.odds = float(np.exp2(np.minimum(bits[borne_out], 1000.0)).sum()) / max(self._candidates, 1)
         settled = borne_out[best] and self.odds >= self.threshold
         return self._shift(best, row, float(gains[best])) if settled else None
 

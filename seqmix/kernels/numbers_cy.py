@@ -353,8 +353,9 @@ def quantiles(
     """out[i] = the least x between low and high with P(X <= x) >= levels[i]; out comes in as first guesses.
 
     The first `some` of `atoms`, ascending, are those of the plain scale: one of them is x, or two of them enclose it.
-    Between these, Newton's method, kept between two ends that close in, by halving where it would leave them; until
-    a step is under 1e-12 of `plain`, the least scale, and of x times `log_scale`, the least on the log scale.
+    Between these, Newton's method, kept between two ends that close in, by halving where it would leave them or its
+    steps do not halve; until a step is under 1e-12 of `plain`, the least scale, and of x times `log_scale`, the least
+    on the log scale.
     """
     i: cython.Py_ssize_t
     k: cython.Py_ssize_t
@@ -366,6 +367,8 @@ def quantiles(
     x: cython.double
     p: cython.double
     step: cython.double
+    stride: cython.double
+    near: cython.double
     with cython.nogil:
         for i in range(levels.shape[0]):
             a = low
@@ -390,6 +393,7 @@ def quantiles(
                     continue
             if last > 0:
                 a = max(a, atoms[last - 1])
+            stride = b - a
             for turn in range(400):
                 if not a < x < b:
                     x = _between(a, b)
@@ -401,19 +405,18 @@ def quantiles(
                 else:
                     a = x
                 step = _density(x, weights, centres, scales, shapes, norms, logs)
-                if step <= 0.0 or turn % 8 == 7:
-                    x = _between(a, b)
-                    continue
-                step = (levels[i] - p) / step
-                if not a < x + step < b:
-                    if fabs(step) <= 1e-15 * fabs(x) and p >= levels[i]:
+                step = (levels[i] - p) / step if step > 0.0 else 1e300
+                near = max(1e-12 * min(plain, fabs(x) * log_scale), 1e-15 * fabs(x))
+                if fabs(step) <= near:
+                    if p >= levels[i] or x + near >= b:
                         break
+                    x = x + near
+                elif not a < x + step < b or fabs(step) > 0.5 * stride:
                     x = _between(a, b)
-                    continue
-                x = x + step
-                if fabs(step) <= 1e-12 * min(plain, fabs(x) * log_scale):
-                    b = x
-                    break
+                    stride = b - a
+                else:
+                    x = x + step
+                    stride = fabs(step)
             out[i] = b
 
 

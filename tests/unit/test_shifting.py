@@ -8,11 +8,12 @@ from math import log2
 import numpy as np
 import pytest
 from scipy import stats
+from scipy.signal import lfilter
 
 import seqmix
 from seqmix.errors import OptionError
 from seqmix.number_runs import MEAN_ROWS, OUTLIERS, SHAPE, NumberWays
-from seqmix.runs import BORNE_OUT, MOST, Runs
+from seqmix.runs import BORNE_OUT, KEPT, MOST, Runs
 from seqmix.shifting import _Search
 from seqmix.state_runs import StateWays
 
@@ -66,7 +67,7 @@ def test_odds_are_those_of_every_start_reckoned_by_itself():
         assert runs.absorb(row, side) is None
         seen = sides[: row + 1]
         gains = [
-            coin_bits(seen) - coin_bits(seen[:start]) - coin_bits(seen[start:])
+            coin_bits(seen) - coin_bits(seen[:start]) - coin_bits(seen[start:]) + 3 * log2(min(start / KEPT, 1))
             for start in range(1, row + 2 - BORNE_OUT)
         ]
         expected = sum(2.0**gain for gain in gains) / max(row, 1)
@@ -191,17 +192,46 @@ def test_levels_and_a_higher_bar():
     assert high.level_after == pytest.approx(numbers[60 : high.known_row].mean())
 
 
-def test_steady_logs_hardly_have_a_shift():
-    steady: dict[str, Callable[[np.random.Generator], np.ndarray]] = {
-        "normal": lambda rng: rng.normal(size=400),
-        "random walk": lambda rng: rng.normal(size=400).cumsum(),
-        "lognormal": lambda rng: np.exp(rng.normal(size=400)),
-        "counts": lambda rng: rng.poisson(3, size=400),
-    }
-    for name, make in steady.items():
-        values = [make(np.random.default_rng(seed)).astype(float).tolist() for seed in range(5)]
-        shifts = [len(seqmix.shifts(log, models=["trend"]).shifts) for log in values]
-        assert sum(count > 0 for count in shifts) <= (name == "random walk"), (name, shifts)
+STEADY: dict[str, Callable[[np.random.Generator], np.ndarray]] = {
+    "normal": lambda rng: rng.normal(size=600),
+    "autoregression 0.9": lambda rng: lfilter([1], [1, -0.9], rng.normal(size=600)),
+    "autoregression 0.6": lambda rng: lfilter([1], [1, -0.6], rng.normal(size=600)),
+    "random walk": lambda rng: rng.normal(size=600).cumsum(),
+    "wandering level": lambda rng: 0.1 * rng.normal(size=600).cumsum() + rng.normal(size=600),
+    "heavy tails": lambda rng: rng.standard_t(3, size=600),
+    "lognormal": lambda rng: np.exp(rng.normal(size=600)),
+    "counts": lambda rng: rng.poisson(3, size=600),
+    "week": lambda rng: np.tile([4, 3, 5, 4, 6, 0, 1], 100)[:600] + rng.normal(size=600),
+}
+
+
+@pytest.mark.parametrize("name", STEADY)
+def test_steady_logs_have_no_shift(name):
+    period = 7 if name == "week" else None
+    logs = [STEADY[name](np.random.default_rng(seed)).astype(float).tolist() for seed in range(4)]
+    found = [bool(seqmix.shifts(log, period=period, models=["trend"]).shifts) for log in logs]
+    assert sum(found) <= (name == "wandering level"), found  # a quiet stretch of it looks like a level that stays
+
+
+def test_steady_states_hardly_have_a_shift():
+    limits = np.cumsum([[0.1, 0.8, 0.1], [0.2, 0.2, 0.6], [0.7, 0.1, 0.2]], axis=1)
+    found = []
+    for seed in range(5):
+        states = [0]
+        for chance in np.random.default_rng(seed).random(600):
+            states.append(int((chance > limits[states[-1]]).sum()))
+        names = [("fill", "cap", "label")[state] for state in states]
+        found.append(bool(seqmix.shifts(names, models=["memoryless"]).shifts))
+    assert sum(found) <= 1, found
+    text = np.random.default_rng(1).integers(0, 256, 600).astype(np.uint8).tobytes()
+    assert seqmix.shifts(text, models=["memoryless"]).shifts == []
+
+
+def test_a_large_shift_is_found_even_where_the_old_ways_were_new():
+    for seed in range(3):
+        values = np.random.default_rng(seed).normal(size=80)
+        values[14:] += 6
+        assert [shift.row for shift in seqmix.shifts(values.tolist(), models=["trend"]).shifts] == [15]
 
 
 @pytest.mark.parametrize(
