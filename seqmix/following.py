@@ -180,10 +180,15 @@ class Follower:
                 self._told = self._law = None
             if anew or self._alarms is None:
                 self._set_rate()
-            logged = len(rows) - (stop - start)
+            gap = len(rows) - (stop - start)  # missing rows put in before
+            if gap:
+                self._known.mixture.absorb(rows[:gap])
+                rows = rows[gap:]
+                assert rows.times is not None
+                self._foretell(int(rows.times[0]))
             answers = self._numbers(rows) if held.dtype == np.float64 else self._states(rows)
             self.torn = False
-            yield from (answer for row, answer in enumerate(answers) if row >= logged)
+            yield from answers
             start = stop
         if start < len(held) and self._known.facts.kind == "states":
             self._known.facts.alphabet.forget(self._known.mixture.seen)  # the rest may come again
@@ -202,12 +207,16 @@ class Follower:
         """How many of the next rows may be taken together: those that come when they are expected."""
         if self._steps > 1:
             return 1
+        held = held[:AT_ONCE]
+        if held.dtype == np.float64:  # one without a value comes alone
+            missing = np.flatnonzero(np.isnan(held))
+            held = held[: max(int(missing[0]), 1)] if len(missing) else held
         if times is None:
-            return min(len(held), AT_ONCE)
+            return len(held)
         cadence = self._known.facts.cadence
         if cadence is None:
             return 1
-        steps = np.diff(times[:AT_ONCE], prepend=self._known.filler.last or 0)
+        steps = np.diff(times[: len(held)], prepend=self._known.filler.last or 0)
         late = np.flatnonzero(steps != cadence)
         return max(int(late[0]), 1) if len(late) else len(steps)
 
@@ -246,34 +255,27 @@ class Follower:
     # ---- numbers -----------------------------------------------------------------------------------------------
 
     def _numbers(self, rows: Rows) -> list[dict[str, Any]]:
-        """Answers to rows that come one by one, or all when they are expected."""
         mixture = self._known.mixture
         assert isinstance(mixture, NumberMixture) and rows.values is not None
-        together = 1 if rows.times is not None and int(rows.times[0]) != self._due else len(rows)
+        known = mixture.present
+        bits, laws = self._absorbed(mixture, rows)
+        weights = mixture.latest_weights
         answers = []
-        for start in range(0, len(rows), together):
-            part = rows[start : start + together]
-            assert part.values is not None
-            known = mixture.present
-            bits, laws = self._absorbed(mixture, part)
-            weights = mixture.latest_weights
-            for t, value in enumerate(part.values.tolist()):
-                time = None if part.times is None else int(part.times[t])
-                found = None
-                if value == value:
-                    law = laws[t]
-                    assert law is not None
-                    median = self._told[0]["median"] if self._told and time == self._due else law.median
-                    found = of_value(mixture, t, law, median, known)
-                    known += 1
-                answer = self._answer(part, t, value if value == value else None, bits[t], found)
-                self._due = None if time is None else time + (self._known.facts.cadence or 0)
-                ahead = laws[t + 1] if t + 1 < len(part) else None
-                if ahead is not None:
-                    self._told, heavy = [self._of_number(ahead.lighter(LIGHT))], weights[t + 1]
-                else:
-                    heavy = self._foretell(self._due)
-                answers.append(self._complete(answer, heavy))
+        for t, (value, law) in enumerate(zip(rows.values.tolist(), laws, strict=True)):
+            time = None if rows.times is None else int(rows.times[t])
+            found = None
+            if law is not None:
+                median = self._told[0]["median"] if self._told and time == self._due else law.median
+                found = of_value(mixture, t, law, median, known)
+                known += 1
+            answer = self._answer(rows, t, value if value == value else None, bits[t], found)
+            self._due = None if time is None else time + (self._known.facts.cadence or 0)
+            ahead = laws[t + 1] if t + 1 < len(rows) else None
+            if ahead is not None:
+                self._told, heavy = [self._of_number(ahead.lighter(LIGHT))], weights[t + 1]
+            else:
+                heavy = self._foretell(self._due)
+            answers.append(self._complete(answer, heavy))
         return answers
 
     def _absorbed(self, mixture: NumberMixture, rows: Rows) -> tuple[list[float], Sequence[NumberLaw | None]]:
@@ -283,9 +285,9 @@ class Follower:
             bits, laws = mixture.tell(rows)
             return bits.tolist(), laws
         time = None if rows.times is None else int(rows.times[0])
-        if not np.isnan(rows.values[0]) and (self._law is None or time != self._due):
-            self._law = mixture.predict(time)
-        law = self._law
+        law = None
+        if not np.isnan(rows.values[0]):
+            law = self._law if self._law is not None and time == self._due else mixture.predict(time)
         return mixture.absorb(rows).tolist(), [law]
 
     def _of_number(self, law: NumberLaw) -> dict[str, Any]:

@@ -161,7 +161,7 @@ class NumberRun:
 
     def _score(self, mixture: NumberMixture, rows: Rows, stands_for: int) -> None:
         """Score rows; their laws are looked at if each stands for some."""
-        laws: list[NumberLaw] = []
+        laws: list[NumberLaw | None] = []
         if stands_for:
             if self._steps:
                 self._look_ahead(mixture, None if rows.times is None else int(rows.times[0]), stands_for)
@@ -173,8 +173,9 @@ class NumberRun:
         for at, (value, width) in enumerate(zip(cells.values.tolist(), cells.cells.tolist(), strict=True)):
             if np.isnan(value):
                 continue
-            if laws:
-                self._measures.learn(laws[at].lighter(LIGHT), value, width, stands_for)
+            law = laws[at] if laws else None
+            if law is not None:
+                self._measures.learn(law.lighter(LIGHT), value, width, stands_for)
             for _, step, ahead, weight in (one for one in self._waiting if one[0] == self._scored + at):
                 self._ahead[step].learn(ahead, value, width, weight)
         self._scored += len(rows)

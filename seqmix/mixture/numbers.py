@@ -51,6 +51,11 @@ def _mixed(weights: Floats, laws: Sequence[NumberLaw | None]) -> NumberLaw | Non
     return NumberLaw.combine([weight for weight, _ in awake], [law for _, law in awake]) if awake else None
 
 
+def _first(wanted: npt.NDArray[np.bool_]) -> int:
+    """Where the first one is; how many there are, if none is."""
+    return int(np.argmax(np.append(wanted, True)))
+
+
 class NumberMixture(Mixture):
     """A weighted Bayesian mixture of models over one log of numbers.
 
@@ -97,23 +102,27 @@ class NumberMixture(Mixture):
             return np.concatenate([self.absorb(rows[at : at + CHUNK], None, frozen) for at in starts])
         return self._absorb(rows, None, frozen) if len(rows) else np.zeros(0)
 
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw]]:
-        """`absorb`, and the law of each row before it, as `predict` would have given it at its time.
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+        """`absorb`, and the law of each row before it, as `predict` would have given it; None where a value is missing.
 
         Sets latest_weights (n, models), those of the laws, and latest.
         """
         assert rows.values is not None
-        bits, weights = np.empty(len(rows)), np.empty((len(rows), len(self.models)))
+        bits, weights = np.empty(len(rows)), np.zeros((len(rows), len(self.models)))
         shown, cells, events = np.empty((3, len(rows)))
-        laws: list[NumberLaw] = []
+        laws: list[NumberLaw | None] = []
         while (start := len(laws)) < len(rows):
-            # one by one: rows that the models are not shown, and those before the unit is chosen
+            values = rows.values[start : start + CHUNK]
             with np.errstate(over="ignore"):
-                plain = self.factor * np.abs(rows.values[start : start + CHUNK]) <= HUGE / 2
-            together = int(np.argmin(np.append(plain, False))) if self.factor else 0
-            part = rows[start : start + max(together, 1)]
+                plain = self.factor * np.abs(values) <= HUGE / 2
+            missing, together = _first(~np.isnan(values)), _first(~plain) if self.factor else 0
+            # one by one: rows that the models are not shown, and those before the unit is chosen
+            part = rows[start : start + max(missing, together, 1)]
             stop = start + len(part)
-            if together:
+            if missing:
+                bits[start:stop] = self._absorb(part, None, frozen)
+                laws += [None] * len(part)
+            elif together:
                 ask = NumberAsk(len(part))
                 bits[start:stop] = self._absorb(part, ask, frozen)
                 laws += [FIRST if law is None else self._back(law) for law in ask.laws]

@@ -17,6 +17,8 @@ import seqmix
 from seqmix.errors import DataError
 from seqmix.following import AT_ONCE, Follower, Reader, together
 from seqmix.learned import Learned, load
+from seqmix.mixture.mixture import Mixture
+from seqmix.mixture.numbers import NumberMixture
 from seqmix.surprising import SurpriseRow
 
 QUICK = ["memoryless", "markov", "dwell"]
@@ -352,6 +354,26 @@ def test_gaps_new_states_and_missing_values():
     for t in new:
         assert told[t]["p_value"] >= told[t]["forecast"]["unseen"] > 0
     assert [answer["time"] for answer in told] == [line.split(",")[0] for line in lines[1:]]
+
+
+@pytest.mark.parametrize("kind", ["states", "numbers"])
+def test_a_long_gap_is_not_foretold_row_by_row(kind, monkeypatch):
+    """Ten days of a row a minute that nobody logged: one forecast, after all of them."""
+    days = ("02", "12")
+    cells = [("cap", "fill")[t % 2] if kind == "states" else str(4 + t % 2) for t in range(20)]
+    lines = ["time,value\n", *(f"2026-03-{days[t // 10]}T06:{t:02d},{cell}\n" for t, cell in enumerate(cells))]
+    mixture, asked = (Mixture if kind == "states" else NumberMixture), []
+    predict = mixture.predict
+
+    def counted(self: Any, time: int | None = None) -> Any:
+        asked.append(time)
+        return predict(self, time)
+
+    monkeypatch.setattr(mixture, "predict", counted)
+    told = answers(lines, [10], ["memoryless"] if kind == "states" else ["trend"])
+    assert len(asked) <= 20
+    assert [answer["row"] for answer in told][9:11] == [10, 10 * 1440 + 11]
+    assert told[10]["forecast"] is not None
 
 
 def test_more_rows_at_once_than_are_taken_together():

@@ -26,12 +26,12 @@ out = {"mode": kernels.MODE}
 for model in registry.MODELS:
     for kind in model.kinds:
         one = testing.made(model, kind)()
-        rows = testing.states_log(kind, 100 if issubclass(model, Compressed) else 700)
+        rows = testing.states_log(kind, 100 if issubclass(model, Compressed) else 400)
         bits = one.absorb(rows)
         law = one.predict(None if rows.times is None else int(rows.times[-1]) + 60_000_000)
         out[f"{kind} {model.name}"] = hashlib.sha256(bits.tobytes() + law.masses.tobytes()).hexdigest()
 for kind in ("states", "bytes"):
-    bits = Mixture(kind=kind).absorb(testing.states_log(kind, 700).codes)
+    bits = Mixture(kind=kind).absorb(testing.states_log(kind, 150).codes)
     out[kind] = hashlib.sha256(bits.tobytes()).hexdigest()
 for name, log in testing.NUMBER_LOGS.items():
     mixture = NumberMixture(context=testing.CONTEXT)

@@ -44,7 +44,9 @@ def test_laws_told_by_a_mixture_are_those_it_predicts() -> None:
         told = [one.tell(scaled[a:b]) for a, b in pairwise([0, 1, 60, 300])]
         losses = np.concatenate([bits for bits, _ in told])
         for t, law in enumerate(law for _, laws in told for law in laws):
-            if t < 70 or t % 50 == 0:
+            if np.isnan(values[t]):
+                assert law is None
+            elif t < 70 or t % 50 == 0:
                 wanted = stepwise.predict(int(rows.times[t]))
                 assert np.array_equal(law.weights, wanted.weights), t
                 assert np.array_equal(law.centres, wanted.centres), t
