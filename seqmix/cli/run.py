@@ -28,6 +28,8 @@ class Stopped(KeyboardInterrupt):
 
 def main() -> int:
     """Run `seqmix` on the arguments of the process; returns the exit code."""
+    # our matrices are small: threads of the linear algebra under numpy only cost, and may add up in another order
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     _on_signals(_stop)
     try:
         try:

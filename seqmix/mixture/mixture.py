@@ -18,8 +18,6 @@ from seqmix.models import registry
 from seqmix.models.protocol import FEWEST_PATHS, Ask, Context, Floats, Model, StatesLaw, Walk, added_up, leading, split
 from seqmix.series.rows import CHUNK, Rows
 
-_WORTH_THREADS = 2048  # rows; below, starting threads costs more than it saves
-
 
 class Mixture(Kept):
     """A weighted Bayesian mixture of models over one log of states or bytes.
@@ -31,6 +29,7 @@ class Mixture(Kept):
     """
 
     kept: tuple[str, ...] = ("bits", "model_bits", "rows", "present", "awake", "asleep", "seen")
+    worth_threads = 2048  # rows; below, starting threads costs more than it saves
 
     def __init__(
         self,
@@ -113,7 +112,7 @@ class Mixture(Kept):
         def one(i: int) -> None:
             losses[:, i] = self._learn(self.models[i], rows, asks[i], frozen)
 
-        _share_out(one, len(self.models), len(rows))
+        _share_out(one, len(self.models), len(rows) >= self.worth_threads)
         want = np.full(len(rows), -1, dtype=np.int32) if ask is None else ask.want
         asleep = np.isnan(losses)
         self.asleep = asleep[-1]
@@ -221,10 +220,10 @@ class Mixture(Kept):
         return {model.name: model.setting() for model in self.models}
 
 
-def _share_out(work: Callable[[int], None], jobs: int, rows: int) -> None:
-    """Run work(0..jobs-1), on all cores when there is enough of it. Raises what the first failing job raised."""
+def _share_out(work: Callable[[int], None], jobs: int, much: bool) -> None:
+    """Run work(0..jobs-1), on all cores if there is much to do. Raises what the first failing job raised."""
     workers = min(len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1, jobs)
-    if workers < 2 or rows < _WORTH_THREADS:
+    if workers < 2 or not much:
         for job in range(jobs):
             work(job)
         return

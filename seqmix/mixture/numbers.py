@@ -84,6 +84,7 @@ class NumberMixture(Mixture):
         return self.context
 
     kept = (*Mixture.kept, "factor")
+    worth_threads = 256
 
     def parts(self) -> dict[str, Kept]:
         return super().parts() | {"grid": self.grid}

@@ -117,7 +117,7 @@ def test_threads_change_nothing(kind: str, timed: bool, monkeypatch: pytest.Monk
             return np.full(len(rows), 1.0)
 
     def bits(least: int) -> np.ndarray:
-        monkeypatch.setattr(module, "_WORTH_THREADS", least)
+        monkeypatch.setattr(Mixture, "worth_threads", least)
         used.clear()
         Mixture([Watched(str(i), 0.5) for i in range(200)]).absorb(np.zeros(5, dtype=np.int32))
         return Mixture(kind=kind, timed=timed).absorb(rows)
@@ -133,7 +133,7 @@ import sys
 import numpy as np
 from seqmix.mixture import mixture as module
 module.os.sched_getaffinity = lambda _: {0, 1, 2, 3}
-module._WORTH_THREADS = int(sys.argv[1])
+module.Mixture.worth_threads = int(sys.argv[1])
 sys.setswitchinterval(1e-6)
 codes = np.maximum.accumulate(np.arange(12_000) // 2)
 codes[1::2] = np.random.default_rng(1).integers(0, codes[1::2] + 1)
@@ -158,7 +158,7 @@ def test_a_model_that_fails_is_heard(least: int, monkeypatch: pytest.MonkeyPatch
         def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> np.ndarray:
             raise OverflowError("broken")
 
-    monkeypatch.setattr(module, "_WORTH_THREADS", least)
+    monkeypatch.setattr(Mixture, "worth_threads", least)
     with pytest.raises(OverflowError, match="broken"):
         Mixture([Coin("a", 0.5), Broken("b", 0.5), Coin("c", 0.5)]).absorb(flips(10))
 

@@ -8,6 +8,7 @@ from itertools import pairwise
 import numpy as np
 import pytest
 
+from seqmix.mixture import mixture
 from seqmix.mixture.numbers import NumberMixture
 from seqmix.models import registry
 from seqmix.models.compressed_bins import CompressedBins
@@ -51,6 +52,16 @@ def test_laws_told_by_a_mixture_are_those_it_predicts() -> None:
                 assert np.array_equal(law.weights, wanted.weights), t
                 assert np.array_equal(law.centres, wanted.centres), t
             assert stepwise.absorb(scaled[t : t + 1])[0] == losses[t], t
+
+
+def test_threads_change_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(mixture.os, "sched_getaffinity", lambda _: {0, 1, 2}, raising=False)
+    bits = []
+    for least in (1, 1 << 40, 1):
+        monkeypatch.setattr(NumberMixture, "worth_threads", least)
+        bits.append(NumberMixture(context=CONTEXT).absorb(waves(500)))
+    assert np.array_equal(bits[0], bits[1])
+    assert np.array_equal(bits[2], bits[1])
 
 
 def test_many_rows_at_once_are_those_rows_in_chunks() -> None:
