@@ -12,13 +12,13 @@ from seqmix.models.history import ChunkPast, Codes, Fork, History, Past
 from seqmix.models.protocol import Floats, Setting, StatesModel
 
 TRUSTS = 64  # 4 x min(length, 15) + min(wrong guesses lately, 3)
-_FIRST, _MOST_ROWS, _MOST_PLACES = 1 << 10, 1 << 20, 1 << 18
+_FIRST, _MOST_ROWS, _MOST_PLACES = 1 << 10, 1 << 19, 1 << 18
 
 
 class Follower(Kept):
     """The place in the past whose continuation is being followed (kernels/repeats_cy.py).
 
-    Remembers the last million rows, and where each of 262,144 hashes was seen last.
+    Remembers the last 524,288 rows, and where each of 262,144 hashes was seen last.
     """
 
     kept = ("ring", "places", "counters")

@@ -20,7 +20,7 @@ class Tree(StatesModel):
     source = "Willems, Shtarkov & Tjalkens 1995; Tjalkens, Willems & Shtarkov 1994"
 
     def bank(self, alphabet: int) -> tuple[list[Setting], History]:
-        most = 20 if alphabet else 19
+        most = 20 if alphabet else 17
         settings: list[Setting] = [
             ContextTree("prior count 1/2", _orders, alphabet=alphabet, alpha=1 / 2, most=most),
             ContextTree(

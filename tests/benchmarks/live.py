@@ -7,21 +7,18 @@ from __future__ import annotations
 
 import argparse
 import csv
-import os
 import runpy
 import subprocess
 import threading
 import time
 from collections.abc import Callable
-from concurrent.futures import ProcessPoolExecutor
-from multiprocessing import get_context
 from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import Any
 
 import numpy as np
 from logs import DATA, chain
-from processes import SEQMIX, run, table
+from processes import SEQMIX, peak, table
 from scipy.signal import lfilter
 
 import seqmix
@@ -35,10 +32,6 @@ def of_line(rows: int) -> list[str]:
     made = runpy.run_path(str(EXAMPLES / "make_line.py"))
     states, _ = made["simulate"](rows / DAY + 0.1, 7)
     return made["table"](states, 10, 7).splitlines(keepends=True)[: rows + 1]
-
-
-def write_line(path: Path, rows: int) -> None:
-    path.write_text("".join(of_line(rows)), encoding="ascii")
 
 
 def of_tank(rows: int) -> list[str]:
@@ -119,21 +112,14 @@ def memory(sizes: list[int]) -> None:
     with TemporaryDirectory() as place:
         for rows in sizes:
             log, state = Path(place) / "line.csv", Path(place) / "line.state"
-            with ProcessPoolExecutor(1, get_context("spawn")) as other:  # or its memory would count as that of children
-                other.submit(write_line, log, rows).result()
+            log.write_text("".join(of_line(rows)), encoding="ascii")
             state.unlink(missing_ok=True)
-            learned = run(*SEQMIX, "learn", str(log), "--into", str(state), "--quiet")
-            cells = [f"{learned.peak:.0f}", f"{learned.seconds:.0f}", f"{state.stat().st_size / 1e6:.2f}"]
-            start = time.perf_counter()
-            with (
-                subprocess.Popen(["cat", log], stdout=subprocess.PIPE) as cat,
-                open(os.devnull, "wb") as nowhere,
-                subprocess.Popen([*SEQMIX, "follow", "--quiet"], stdin=cat.stdout, stdout=nowhere) as child,
-            ):
-                _, status, usage = os.wait4(child.pid, 0)
-                child.returncode = os.waitstatus_to_exitcode(status)
-            cells += [f"{usage.ru_maxrss / 1024:.0f}", f"{time.perf_counter() - start:.0f}"]
-            lines.append([f"{rows:,}", *cells])
+            learned = peak(*SEQMIX, "learn", str(log), "--into", str(state), "--quiet")
+            followed = peak(*SEQMIX, "follow", "--quiet", log=log)
+            size = state.stat().st_size / 1e6
+            lines.append(
+                [f"{rows:,}", *(f"{one:.0f}" for one in learned), f"{size:.2f}", *(f"{one:.0f}" for one in followed)]
+            )
     table(["rows of states", "learn, peak MB", "seconds", "state, MB", "follow, peak MB", "seconds"], lines)
 
 
