@@ -261,7 +261,9 @@ class Follower:
         bits, laws = self._absorbed(mixture, rows)
         weights = mixture.latest_weights
         answers = []
-        for t, (value, law) in enumerate(zip(rows.values.tolist(), laws, strict=True)):
+        ahead = next(laws)
+        for t, value in enumerate(rows.values.tolist()):
+            law, ahead = ahead, next(laws, None)
             time = None if rows.times is None else int(rows.times[t])
             found = None
             if law is not None:
@@ -270,7 +272,6 @@ class Follower:
                 known += 1
             answer = self._answer(rows, t, value if value == value else None, bits[t], found)
             self._due = None if time is None else time + (self._known.facts.cadence or 0)
-            ahead = laws[t + 1] if t + 1 < len(rows) else None
             if ahead is not None:
                 self._told, heavy = [self._of_number(ahead.lighter(LIGHT))], weights[t + 1]
             else:
@@ -278,7 +279,7 @@ class Follower:
             answers.append(self._complete(answer, heavy))
         return answers
 
-    def _absorbed(self, mixture: NumberMixture, rows: Rows) -> tuple[list[float], Sequence[NumberLaw | None]]:
+    def _absorbed(self, mixture: NumberMixture, rows: Rows) -> tuple[list[float], Iterator[NumberLaw | None]]:
         """Losses, and the law before each row at its time; for a single one it may have been foretold."""
         assert rows.values is not None
         if len(rows) > 1:
@@ -288,7 +289,7 @@ class Follower:
         law = None
         if not np.isnan(rows.values[0]):
             law = self._law if self._law is not None and time == self._due else mixture.predict(time)
-        return mixture.absorb(rows).tolist(), [law]
+        return mixture.absorb(rows).tolist(), iter([law])
 
     def _of_number(self, law: NumberLaw) -> dict[str, Any]:
         low, median, high = law.quantile([LEVELS[0], 0.5, LEVELS[1]]).tolist()

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
+from itertools import repeat
 from typing import Any
 
 import numpy as np
@@ -161,7 +162,7 @@ class NumberRun:
 
     def _score(self, mixture: NumberMixture, rows: Rows, stands_for: int) -> None:
         """Score rows; their laws are looked at if each stands for some."""
-        laws: list[NumberLaw | None] = []
+        laws: Iterable[NumberLaw | None] = repeat(None)
         if stands_for:
             if self._steps:
                 self._look_ahead(mixture, None if rows.times is None else int(rows.times[0]), stands_for)
@@ -170,10 +171,10 @@ class NumberRun:
             losses = mixture.absorb(rows, frozen=self._frozen)
         base, cells = self._follow(mixture)
         assert cells.values is not None and cells.cells is not None
-        for at, (value, width) in enumerate(zip(cells.values.tolist(), cells.cells.tolist(), strict=True)):
+        places = zip(cells.values.tolist(), cells.cells.tolist(), laws, strict=False)
+        for at, (value, width, law) in enumerate(places):
             if np.isnan(value):
                 continue
-            law = laws[at] if laws else None
             if law is not None:
                 self._measures.learn(law.lighter(LIGHT), value, width, stands_for)
             for _, step, ahead, weight in (one for one in self._waiting if one[0] == self._scored + at):

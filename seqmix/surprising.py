@@ -196,9 +196,10 @@ class Watch:
             part = rows[start : start + _AT_ONCE]
             known = mixture.present
             bits, laws = mixture.tell(part)
-            for t in np.flatnonzero(part.codes >= 0).tolist():
-                yield start + t, float(bits[t]), of_value(mixture, t, laws[t], laws[t].lighter(LIGHT).median, known)
-                known += 1
+            for t, law in enumerate(laws):
+                if law is not None:
+                    yield start + t, float(bits[t]), of_value(mixture, t, law, law.lighter(LIGHT).median, known)
+                    known += 1
 
 
 def of_law(law: np.ndarray, code: int, new: bool) -> Improbable:

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Iterator, Sequence
+from itertools import chain
 from typing import Any
 
 import numpy as np
@@ -32,18 +33,22 @@ PATHS = 500
 
 
 class NumberAsk:
-    """The law of every row of a chunk is wanted: `laws`, n of them, None where asleep."""
+    """The law of every row of a chunk is wanted: `laws`, n of them, None where asleep.
+
+    They are made as they are taken: that of counts may be long.
+    """
 
     def __init__(self, rows: int) -> None:
         self.want = np.arange(rows, dtype=np.int32)
-        self.laws: list[NumberLaw | None] = [None] * rows
+        self.laws: Iterable[NumberLaw | None] = ()
 
     def again(self) -> NumberAsk:
-        return NumberAsk(len(self.laws))
+        return NumberAsk(len(self.want))
 
     def add_up(self, weights: Floats, parts: Sequence[NumberAsk]) -> None:
         """Laws mixed by weights (n, models) from those of each model."""
-        self.laws = [_mixed(line, laws) for line, *laws in zip(weights, *(part.laws for part in parts), strict=True)]
+        rows = zip(weights, *(part.laws for part in parts), strict=True)
+        self.laws = (_mixed(line, laws) for line, *laws in rows)
 
 
 def _mixed(weights: Floats, laws: Sequence[NumberLaw | None]) -> NumberLaw | None:
@@ -103,16 +108,17 @@ class NumberMixture(Mixture):
             return np.concatenate([self.absorb(rows[at : at + CHUNK], None, frozen) for at in starts])
         return self._absorb(rows, None, frozen) if len(rows) else np.zeros(0)
 
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, Iterator[NumberLaw | None]]:
         """`absorb`, and the law of each row before it, as `predict` would have given it; None where a value is missing.
 
-        Sets latest_weights (n, models), those of the laws, and latest.
+        Sets latest_weights (n, models), those of the laws, and latest. Laws are made as they are taken.
         """
         assert rows.values is not None
         bits, weights = np.empty(len(rows)), np.zeros((len(rows), len(self.models)))
         shown, cells, events = np.empty((3, len(rows)))
-        laws: list[NumberLaw | None] = []
-        while (start := len(laws)) < len(rows):
+        laws: list[Iterable[NumberLaw | None]] = []
+        start = 0
+        while start < len(rows):
             values = rows.values[start : start + CHUNK]
             with np.errstate(over="ignore"):
                 plain = self.factor * np.abs(values) <= HUGE / 2
@@ -122,22 +128,23 @@ class NumberMixture(Mixture):
             stop = start + len(part)
             if missing:
                 bits[start:stop] = self._absorb(part, None, frozen)
-                laws += [None] * len(part)
+                laws.append([None] * len(part))
             elif together:
                 ask = NumberAsk(len(part))
                 bits[start:stop] = self._absorb(part, ask, frozen)
-                laws += [FIRST if law is None else self._back(law) for law in ask.laws]
+                laws.append(FIRST if law is None else self._back(law) for law in ask.laws)
                 weights[start:stop] = self.latest_weights
             else:
-                laws.append(self.predict(None if rows.times is None else int(rows.times[start])))
+                laws.append([self.predict(None if rows.times is None else int(rows.times[start]))])
                 weights[start] = self.latest_weights[-1]
                 bits[start:stop] = self._absorb(part, None, frozen)
             assert self.latest is not None
             shown[start:stop], cells[start:stop] = self.latest.values, self.latest.cells
             events[start:stop] = self.latest_events
+            start = stop
         self.latest, self.latest_events = Rows(rows.codes, rows.times, rows.first, shown, cells), events
         self.latest_weights = weights
-        return bits, laws
+        return bits, chain.from_iterable(laws)
 
     def _learn(self, model: Any, rows: Rows, ask: NumberAsk | None, frozen: bool) -> Floats:
         if ask is None:

@@ -19,7 +19,7 @@ from seqmix.models.calendar import phases
 from seqmix.models.errors import ErrorLaw
 from seqmix.models.lags import FADING, choices
 from seqmix.models.laws import Floats, NumberLaw, settled
-from seqmix.models.numbers import LOOKS, STRAY, Cells, Telling, with_stray
+from seqmix.models.numbers import LOOKS, STRAY, Cells, Laws, Telling, with_stray
 from seqmix.models.protocol import Context, leading, split
 from seqmix.models.regressions import WIDE, Regressions
 from seqmix.series.rows import Rows
@@ -65,7 +65,7 @@ class Autoregression(Telling):
     def _awake(self) -> bool:
         return self.observed >= WAKE
 
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _absorb(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         bits = np.full(len(rows), np.nan)
         cells = Cells.of(rows)
         done = 0
@@ -130,9 +130,7 @@ class Autoregression(Telling):
             out.append(left + (1.0 - left) / (1.0 - fading))
         return np.ascontiguousarray(np.stack(out).astype(np.float64))
 
-    def _learn(
-        self, cells: Cells, times: npt.NDArray[np.int64] | None, frozen: bool, laws: list[NumberLaw | None] | None
-    ) -> Floats:
+    def _learn(self, cells: Cells, times: npt.NDArray[np.int64] | None, frozen: bool, laws: Laws | None) -> Floats:
         n = len(cells)
         places = self._places(self.rows, n, times)
         df = self._df(self.observed + np.cumsum(cells.usable[0]) - cells.usable[0])

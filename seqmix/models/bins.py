@@ -12,7 +12,7 @@ from seqmix.keep import Kept
 from seqmix.models.history import Codes
 from seqmix.models.laws import UNIFORM, Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import Looking
+from seqmix.models.numbers import Laws, Looking
 from seqmix.models.pool import Pool
 from seqmix.models.protocol import Ask, Context, StatesModel
 from seqmix.series.rows import Rows
@@ -128,7 +128,7 @@ class Bins(Looking):
         """Bin of each step, -1 where there is none."""
         return np.where(np.isnan(steps), -1, np.searchsorted(self.edges, steps, side="right")).astype(np.int32)
 
-    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         values, widths = rows.values, rows.cells
         there = ~np.isnan(values)

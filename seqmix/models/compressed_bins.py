@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 from seqmix.compressors.protocol import Compressor
 from seqmix.models.bins import Bins
 from seqmix.models.compressed import Allowance, Compressed
@@ -37,7 +39,7 @@ class CompressedBins(Sleeper, Bins):
         slept = self._rows_slept + rows
         return self.rows + slept < 1 << self.rows.bit_length() and (not self.awake or self._states.sleeps(slept))
 
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, Iterable[NumberLaw | None]]:
         if not frozen and self.sleeps(len(rows)):
             return self.absorb(rows), [None] * len(rows)
         self._follow()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import partial
 from math import ceil, inf, nan
 
 import numpy as np
@@ -12,7 +13,7 @@ from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.calendar import phases
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Looking
+from seqmix.models.numbers import Laws, Looking
 from seqmix.models.protocol import Context, split
 from seqmix.series.rows import Rows
 
@@ -86,7 +87,7 @@ class Counts(Looking):
             self._weights.keep(which)
             self.alive = self.alive[which]
 
-    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         values, widths, n = rows.values, rows.cells, len(rows)
         there = ~np.isnan(values)
@@ -115,7 +116,7 @@ class Counts(Looking):
         bits, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
         if laws is not None:
             for t, heavy in enumerate(weights):
-                laws.append(self._law(heavy, a[t], b[t], broad[t]) if before[t] == 1.0 else None)
+                laws.append(partial(self._law, heavy, a[t], b[t], broad[t]) if before[t] == 1.0 else None)
         return bits
 
     def _follow(
@@ -151,16 +152,22 @@ class Counts(Looking):
 
     def _law(self, weights: Floats, a: Floats, b: Floats, base: NumberLaw) -> NumberLaw:
         """Atoms as far as they weigh anything, and the broad law; weights, a, b (settings,)."""
+        # settings that say the same are one: all rates that nothing is known of yet
+        alike: dict[tuple[float, float], float] = {}
+        for shape, size, weight in zip(a.tolist(), b.tolist(), weights.tolist(), strict=True):
+            alike[shape, size] = alike.get((shape, size), 0.0) + weight
+        (a, b), heavy = np.array(list(alike)).T, np.array(list(alike.values()))
         most = 64 + ceil(float((a / b).max()))
         log_next = -a * np.log1p(1.0 / b)  # of the mass of the next count, under each setting
         parts: list[Floats] = []
         done = 0
-        while done < _LONGEST and not (parts and parts[-1][-1] < _LEAST):
+        while done < _LONGEST and len(a):
             counts = np.arange(done, min(most, _LONGEST), dtype=np.float64)[:, None]
             ratios = np.log((a + counts) / ((1.0 + counts) * (1.0 + b)))  # of each mass to the one before
             logs = np.cumsum(np.concatenate([log_next[None, :], ratios]), axis=0)
-            parts.append(np.exp(logs[:-1]) @ weights * (1 - _STRAY))
-            log_next = logs[-1]
+            parts.append(np.exp(logs[:-1]) @ heavy * (1 - _STRAY))
+            going = heavy * np.exp(logs[-1]) >= _LEAST / len(weights)
+            a, b, heavy, log_next = a[going], b[going], heavy[going], logs[-1, going]
             done, most = most, 2 * most
         masses = np.concatenate(parts)
         some = np.flatnonzero(masses >= _LEAST)

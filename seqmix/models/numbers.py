@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Sequence
+from collections.abc import Callable, Iterable, Sequence
 from functools import cached_property
 from typing import Any, ClassVar
 
@@ -110,7 +110,7 @@ class NumbersModel(Kept, ABC):
         frozen: weights stand still; what follows the rows (levels, slopes, coefficients) goes on doing so.
         """
 
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, Iterable[NumberLaw | None]]:
         """`absorb` rows that all have a value, and the law of each before it, equal to what `predict` gives there."""
         return one_by_one(self, rows, frozen)
 
@@ -145,18 +145,22 @@ def one_by_one(model: Any, rows: Rows, frozen: bool) -> tuple[Floats, list[Numbe
     return bits, laws
 
 
+Laws = list["NumberLaw | Callable[[], NumberLaw] | None"]
+"""Laws of rows, or what makes them when they are taken; None where asleep."""
+
+
 class Telling(NumbersModel):
     """A model that learns rows and tells their laws in one go."""
 
     def absorb(self, rows: Rows, ask: Ask | None = None, frozen: bool = False) -> Floats:
         return self._absorb(rows, None, frozen)
 
-    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, list[NumberLaw | None]]:
-        laws: list[NumberLaw | None] = []
-        return self._absorb(rows, laws, frozen), laws
+    def tell(self, rows: Rows, frozen: bool = False) -> tuple[Floats, Iterable[NumberLaw | None]]:
+        laws: Laws = []
+        return self._absorb(rows, laws, frozen), (law() if callable(law) else law for law in laws)
 
     @abstractmethod
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _absorb(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         """`absorb`; adds the law of each row to `laws`, if there are."""
 
 
@@ -170,7 +174,7 @@ class Looking(Telling):
         self.rows = 0
         self._base = Broad()
 
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _absorb(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         assert rows.values is not None
         bits = np.empty(len(rows))
         done = 0
@@ -188,7 +192,7 @@ class Looking(Telling):
         return bits
 
     @abstractmethod
-    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         """Loss of each row, NaN where asleep; adds the law of each to `laws`, if there are."""
 
     def _look(self) -> None:
@@ -252,7 +256,7 @@ class NumberBank(Telling):
     def _paths(self, at: int, steps: int, paths: int, rng: np.random.Generator) -> Floats:
         """Joint continuations under one living setting, (paths, steps)."""
 
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _absorb(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         bits = np.zeros(len(rows))
         cells = Cells.of(rows)
         done = 0

@@ -9,7 +9,7 @@ import numpy as np
 from seqmix.keep import Kept
 from seqmix.models.autoregression import Autoregression
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Telling
+from seqmix.models.numbers import Laws, Telling
 from seqmix.models.protocol import Context
 from seqmix.models.regressions import fill_gaps
 from seqmix.series.rows import Rows
@@ -72,7 +72,7 @@ class Rhythm(Telling):
     def _of(self, period: int) -> Autoregression:
         return Autoregression(Context((period,), None, False))
 
-    def _absorb(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _absorb(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         bits = np.full(len(rows), np.nan)
         done = 0
         while done < len(rows):

@@ -11,7 +11,7 @@ import numpy as np
 from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Looking
+from seqmix.models.numbers import Laws, Looking
 from seqmix.models.protocol import Context
 from seqmix.models.recurrence import recurrence
 from seqmix.series.rows import Rows
@@ -68,7 +68,7 @@ class Rules(Looking):
         super().restore(state)
         self._grid = _Grid(self.recent.tolist(), self.width, self.taps)
 
-    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         values, widths = rows.values, rows.cells
         at: list[int] = []

@@ -14,7 +14,7 @@ from seqmix.keep import Kept
 from seqmix.models.history import Codes
 from seqmix.models.laws import Floats, NumberLaw
 from seqmix.models.novelty import Novelty
-from seqmix.models.numbers import Looking
+from seqmix.models.numbers import Laws, Looking
 from seqmix.models.protocol import Ask, Context
 from seqmix.series.rows import Rows
 
@@ -82,7 +82,7 @@ class Values(Looking):
             self._states.absorb(Rows(self._codes, self._times, 0))
             self._codes, self._times = self._codes[:0], None
 
-    def _learn(self, rows: Rows, laws: list[NumberLaw | None] | None, frozen: bool) -> Floats:
+    def _learn(self, rows: Rows, laws: Laws | None, frozen: bool) -> Floats:
         assert rows.values is not None and rows.cells is not None
         bits = np.full(len(rows), nan)
         if laws is not None and not self.awake:
