@@ -6,6 +6,8 @@ With that p-value, rows of a log that the law tells of truly are at most as impr
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
+from math import ceil
 
 import numpy as np
 
@@ -64,9 +66,8 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
         with np.errstate(over="ignore"):
             return law.cdf(np.clip(value + edges * width, -1e308, 1e308))
 
-    out = np.arange(_NEAR + 1.0)
-    while out[-1] < reach:
-        out = np.append(out, np.ceil(out[-1] + (out[-1] - out[-2]) * growth))
+    out = _ladder(growth)
+    out = out[: int(np.searchsorted(out, reach)) + 1]
     sides = np.concatenate([-out[::-1], out + 1.0]) - 0.5  # edges, in cells from the middle of a cell
     edges = np.unique(np.concatenate([sides, sides + middle]))
     heights = below(edges)
@@ -88,6 +89,15 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
     there = each > 0
     expected = float(-(masses[there] * np.log2(each[there])).sum())
     return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
+
+
+@lru_cache(maxsize=2)
+def _ladder(growth: float) -> Floats:
+    """Cells one by one, then ever further apart, as far as any law reaches."""
+    out = [float(cell) for cell in range(_NEAR + 1)]
+    while out[-1] < _MOST:
+        out.append(ceil(out[-1] + (out[-1] - out[-2]) * growth))
+    return np.array(out)
 
 
 def _inside(edges: Floats, masses: Floats) -> Floats:
