@@ -17,7 +17,7 @@ _NEAR = 6  # cells each way from a place that stand for themselves
 _COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the one before, further out
 _SMALL = 0.02  # p-values from which on the coarse stretches will do
 _REACH = 1e3  # spreads to either side, beyond the furthest centre
-_MOST = 1e13  # cells
+_MOST = 1e22  # cells
 _LIGHT = 1e-4, 1e-7  # weight of the parts of a law that are left out: for coarse stretches, for fine ones
 _HEAVY, _PARTS, _ROUNDS = 0.01, 8, 3  # stretches of more mass are divided so, so many times at most
 _ROUNDED = 1e-12  # masses of cells below are lost in rounding, as differences
@@ -69,7 +69,9 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
     out = _ladder(growth)
     out = out[: int(np.searchsorted(out, reach)) + 1]
     sides = np.concatenate([-out[::-1], out + 1.0]) - 0.5  # edges, in cells from the middle of a cell
-    edges = np.unique(np.concatenate([sides, sides + middle]))
+    others = sides + middle
+    near = np.abs(others) < _NEAR + 1.0
+    edges = np.unique(np.concatenate([sides, others[~near | (others % 1.0 == 0.5)]]))  # no cell near 0 is cut
     heights = below(edges)
     for _ in range(_ROUNDS):
         more = _inside(edges, np.diff(heights))
@@ -78,7 +80,8 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
         edges, first = np.unique(np.concatenate([edges, more]), return_index=True)
         heights = np.concatenate([heights, below(more)])[first]
     masses = np.maximum(np.diff(heights, prepend=0.0, append=1.0), 0.0)
-    cells = np.concatenate([[_MOST], np.diff(edges), [_MOST]])
+    span = edges[-1] - edges[0]
+    cells = np.concatenate([[span], np.diff(edges), [span]])
     each = masses / cells
     came = int(np.searchsorted(edges, 0.0))  # the stretch that is the cell of the value
     if each[came] < _ROUNDED:
@@ -96,7 +99,7 @@ def _ladder(growth: float) -> Floats:
     """Cells one by one, then ever further apart, as far as any law reaches."""
     out = [float(cell) for cell in range(_NEAR + 1)]
     while out[-1] < _MOST:
-        out.append(ceil(out[-1] + (out[-1] - out[-2]) * growth))
+        out.append(float(ceil(out[-1] + (out[-1] - out[-2]) * growth)))
     return np.array(out)
 
 

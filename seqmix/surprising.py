@@ -212,5 +212,6 @@ def of_value(mixture: NumberMixture, t: int, law: NumberLaw, median: float, know
 
     The first of a log is not improbable: nothing was known.
     """
-    found = of_number(law, *mixture.latest_cell(t), median)
+    value, width = mixture.latest_cells[:, t].tolist()
+    found = of_number(law, value, width, median)
     return found if known else replace(found, p_value=1.0)

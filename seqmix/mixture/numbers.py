@@ -81,7 +81,8 @@ class NumberMixture(Mixture):
         self.context = context or Context()
         self.grid = Grid(resolution)
         self.factor = 0.0  # what the models see is the log times this; 0: not chosen yet
-        self.latest: Rows | None = None  # the rows absorbed last, with their cells
+        self.latest: Rows | None = None  # the rows absorbed last, with their cells, as the models see them
+        self.latest_cells: Floats = np.zeros((2, 0))  # their values and widths in the unit of the log
         self.latest_events: Floats = np.zeros(0)  # and the bits that each told of the grid
         super().__init__(models, kind="numbers", timed=self.context.timed, rates=rates, share=share)
 
@@ -116,6 +117,7 @@ class NumberMixture(Mixture):
         assert rows.values is not None
         bits, weights = np.empty(len(rows)), np.zeros((len(rows), len(self.models)))
         shown, cells, events = np.empty((3, len(rows)))
+        logged = np.empty((2, len(rows)))
         laws: list[Iterable[NumberLaw | None]] = []
         start = 0
         while start < len(rows):
@@ -140,10 +142,10 @@ class NumberMixture(Mixture):
                 bits[start:stop] = self._absorb(part, None, frozen)
             assert self.latest is not None
             shown[start:stop], cells[start:stop] = self.latest.values, self.latest.cells
-            events[start:stop] = self.latest_events
+            events[start:stop], logged[:, start:stop] = self.latest_events, self.latest_cells
             start = stop
         self.latest, self.latest_events = Rows(rows.codes, rows.times, rows.first, shown, cells), events
-        self.latest_weights = weights
+        self.latest_weights, self.latest_cells = weights, logged
         return bits, chain.from_iterable(laws)
 
     def _learn(self, model: Any, rows: Rows, ask: NumberAsk | None, frozen: bool) -> Floats:
@@ -160,13 +162,14 @@ class NumberMixture(Mixture):
         values = self.grid.snap(np.where(np.abs(rows.values) < TINY, 0.0, rows.values))
         widths, events = self.grid.cells(values)
         # what a double can hardly square is kept from the models, and charged by the law that knows nothing
-        self._choose_unit(values)
+        factors = self._factors(values)
         with np.errstate(over="ignore", under="ignore"):
-            huge = np.abs(values * self.factor) > HUGE
-            shown = np.where(huge, np.nan, values * self.factor)
-            cells = np.clip(widths * self.factor, 1e-290, HUGE)
+            shown = values * factors
+            huge = np.abs(shown) > HUGE
+            shown[huge] = np.nan
+            cells = np.clip(widths * factors, 1e-290, HUGE)
         self.latest = Rows(rows.codes, rows.times, rows.first, shown, cells)
-        self.latest_events = events
+        self.latest_events, self.latest_cells = events, np.stack([values, widths])
         bits, losses = self._mix(self.latest, ask, frozen)
         alone = np.isnan(bits) & (rows.codes >= 0)  # nobody was awake
         for t in np.flatnonzero(huge | alone).tolist():
@@ -175,19 +178,17 @@ class NumberMixture(Mixture):
         self._charge(bits, losses + events[:, None])
         return bits
 
-    def latest_cell(self, t: int) -> tuple[float, float]:
-        """Value and width of the cell of row `t` of those absorbed last, in the unit of the log."""
-        assert self.latest is not None and self.latest.values is not None and self.latest.cells is not None
-        factor = self.factor or 1.0
-        return float(self.latest.values[t]) / factor, float(self.latest.cells[t]) / factor
-
-    def _choose_unit(self, values: Floats) -> None:
+    def _factors(self, values: Floats) -> Floats:
         """Numbers of a size far from 1 go to the models times a power of two, fixed by the first that is not 0."""
+        factors = np.ones(len(values))
+        first = 0
         if self.factor == 0.0:
-            sized = values[(values != 0) & ~np.isnan(values)]
-            if len(sized):
-                power = int(np.clip(-np.frexp(sized[0])[1], -1000, 1000))
+            first = _first((values != 0) & ~np.isnan(values))
+            if first < len(values):
+                power = int(np.clip(-np.frexp(values[first])[1], -1000, 1000))
                 self.factor = 2.0**power if abs(power) > 100 else 1.0
+        factors[first:] = self.factor
+        return factors
 
     def _back(self, law: NumberLaw) -> NumberLaw:
         """A law of the models, in the unit of the log."""

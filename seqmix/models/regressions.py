@@ -171,7 +171,7 @@ class Regressions(Kept):
             doubts[:, step] = np.sqrt(doubt)
             wrong = (np.abs(ripple[:, : step + 1]) * doubts[:, step::-1]).sum(axis=1)
             spread = (np.square(ripple[:, : step + 1]).sum(axis=1) + wrong**2) * variance
-            scales[step] = np.sqrt(np.minimum(spread, span**2) if step else spread)
+            scales[step] = np.sqrt(np.minimum(spread, span * span) if step else spread)
         return line[:, now:].T, scales
 
     def _dated(self, at: npt.NDArray[np.intp], dated: int, dates: npt.NDArray[np.int32]) -> Floats:

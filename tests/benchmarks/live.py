@@ -132,6 +132,10 @@ def autoregression(seed: int) -> list[float]:
     return np.round(lfilter([1], [1, -0.8], np.random.default_rng(seed).normal(size=2000)), 2).tolist()
 
 
+def all_digits(seed: int) -> list[float]:
+    return np.random.default_rng(seed).normal(size=2000).tolist()
+
+
 def walk(seed: int) -> list[float]:
     return np.round(np.random.default_rng(seed).normal(size=2000).cumsum(), 1).tolist()
 
@@ -151,6 +155,7 @@ def alarms(share: float) -> None:
     makers: dict[str, tuple[Callable[[int], Any], int, dict[str, Any]]] = {
         "states, order 1": (states_of, 5, {}),
         "autoregression 0.8": (autoregression, 20, {}),
+        "normal, written with all digits": (all_digits, 20, {}),
         "random walk": (walk, 20, {}),
         "season of 12 + noise": (season, 20, {"period": 12}),
         "counts, Poisson, a rate for each of 7": (counts, 20, {"period": 7}),

@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from scipy import stats
 
 from seqmix.improbable import Alarms, Improbable, of_number, of_state
 from seqmix.models.laws import NORMAL, UNIFORM, NumberLaw
@@ -188,3 +189,12 @@ def test_no_more_is_spent_than_there_is(laws, rate):
         assert rung == (found[0].p_value <= budget)
         spent += chance
         assert spent <= rate * row * (1 + 1e-9)
+
+
+@pytest.mark.parametrize("width", [1e-2, 1e-7, 1e-15, 1e-18])
+@pytest.mark.parametrize("z", [0.01, 0.7, 2.5, 4.0])
+def test_a_grid_as_fine_as_floats_is_that_of_the_density(width, z):
+    """Under a normal law the density at z is undercut by all that lies further out."""
+    found = of_number(NumberLaw.of(3.0, 1.0), 3.0 + z, width, 3.0)
+    assert found.p_value == pytest.approx(2 * stats.norm.sf(z), rel=0.1)
+    assert found.expected_bits == pytest.approx(np.log2(np.sqrt(2 * np.pi * np.e) / width), abs=0.1)

@@ -33,6 +33,15 @@ def test_any_chunking_of_a_mixture_gives_equal_bits() -> None:
     assert np.isfinite(whole).all()
 
 
+@pytest.mark.parametrize("size", [1e-3, 1e60])
+def test_any_chunking_of_a_log_that_begins_with_zeros(size: float) -> None:
+    values = np.concatenate([np.zeros(30), size * np.arange(1, 40)])
+    whole, parts = NumberMixture(), NumberMixture()
+    bits = whole.absorb(values)
+    assert np.array_equal(np.concatenate([parts.absorb(values[a:b]) for a, b in pairwise([0, 11, 29, 69])]), bits)
+    assert all(np.isfinite(law.median) for law in parts.walk(3))
+
+
 def test_laws_told_by_a_mixture_are_those_it_predicts() -> None:
     """Rows before the unit is chosen, and those without a value, too."""
     rows = waves(300)

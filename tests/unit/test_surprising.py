@@ -233,3 +233,9 @@ def test_odd_logs_have_no_event(values):
     found = seqmix.surprise(values, kind="numbers") if values == [] else seqmix.surprise(values)
     assert found.events == []
     assert found.rows == sum(value == value for value in values)
+
+
+def test_numbers_written_with_all_their_digits_are_no_surprise():
+    """Their cells are as narrow as floats can be."""
+    found = [seqmix.surprise(np.random.default_rng(seed).normal(size=100).tolist()) for seed in range(3)]
+    assert sum(one.surprising for one in found) <= 1
