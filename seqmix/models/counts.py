@@ -145,7 +145,7 @@ class Counts(Looking):
         inside = log_mass(a, b, np.maximum(first, 0.0)[:, None]) / np.log(2.0)
         inside[(first < 0) | (first >= last)] = -inf
         for row in np.flatnonzero(last - first > 1):  # the grid has just become coarser
-            some = np.arange(max(first[row], 0.0), min(last[row], _LONGEST))
+            some = np.arange(*np.clip([first[row], last[row]], 0.0, _LONGEST))
             with np.errstate(divide="ignore"):
                 inside[row] = np.log2(np.exp(log_mass(a[row], b[row], some[:, None])).sum(axis=0))
         return np.asarray(-np.logaddexp2(inside + np.log2(1 - _STRAY), (np.log2(_STRAY) - base)[:, None]))

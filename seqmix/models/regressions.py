@@ -170,7 +170,8 @@ class Regressions(Kept):
             # shocks are new at each row; what is not known of the coefficients is the same at all of them
             doubts[:, step] = np.sqrt(doubt)
             wrong = (np.abs(ripple[:, : step + 1]) * doubts[:, step::-1]).sum(axis=1)
-            spread = (np.square(ripple[:, : step + 1]).sum(axis=1) + wrong**2) * variance
+            with np.errstate(over="ignore"):
+                spread = (np.square(ripple[:, : step + 1]).sum(axis=1) + wrong**2) * variance
             scales[step] = np.sqrt(np.minimum(spread, span * span) if step else spread)
         return line[:, now:].T, scales
 
