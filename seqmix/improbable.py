@@ -16,6 +16,7 @@ from seqmix.models.laws import Floats, NumberLaw
 _NEAR = 6  # cells each way from a place that stand for themselves
 _COARSE, _FINE = 1.6, 1.05  # how much longer each stretch of cells is than the one before, further out
 _SMALL = 0.02  # p-values from which on the coarse stretches will do
+_SMOOTH = 16.0  # stretches to the narrowest part of a law, at least, where that is many cells wide
 _REACH = 1e3  # spreads to either side, beyond the furthest centre
 _MOST = 1e22  # cells
 _LIGHT = 1e-4, 1e-7  # weight of the parts of a law that are left out: for coarse stretches, for fine ones
@@ -66,12 +67,7 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
         with np.errstate(over="ignore"):
             return law.cdf(np.clip(value + edges * width, -1e308, 1e308))
 
-    out = _ladder(growth)
-    out = out[: int(np.searchsorted(out, reach)) + 1]
-    sides = np.concatenate([-out[::-1], out + 1.0]) - 0.5  # edges, in cells from the middle of a cell
-    others = sides + middle
-    near = np.abs(others) < _NEAR + 1.0
-    edges = np.unique(np.concatenate([sides, others[~near | (others % 1.0 == 0.5)]]))  # no cell near 0 is cut
+    edges = _edges(law, value, width, middle, reach, growth)
     heights = below(edges)
     for _ in range(_ROUNDS):
         more = _inside(edges, np.diff(heights))
@@ -92,6 +88,29 @@ def _at(law: NumberLaw, value: float, width: float, middle: float, reach: float,
     there = each > 0
     expected = float(-(masses[there] * np.log2(each[there])).sum())
     return Improbable(min(p, 1.0), max(expected, 0.0), levels, cells[order] <= 1.0)
+
+
+def _edges(law: NumberLaw, value: float, width: float, middle: float, reach: float, growth: float) -> Floats:
+    """Edges of the stretches, in cells from the middle of that of the value."""
+    near, far = np.split(_ladder(growth), [_NEAR + 1])
+    around, gap = near, 1.0  # of the median
+    narrow = np.where(law.logs, abs(value), 1.0) * law.scales
+    with np.errstate(over="ignore"):
+        wide = narrow.min(initial=np.inf, where=narrow > 0) / (_SMOOTH * width * far[0])
+    if 1.0 < wide < _MOST:  # all cells are far narrower than any part of the law: that of the value alone counts
+        near, around, far = near[:1], near[:0], np.ceil(far * wide)
+        gap = far[0] / 2.0
+    far = far[: int(np.searchsorted(far, reach)) + 1]
+    sides, others = _both_sides(near, far), middle + _both_sides(around, far)
+    after = np.searchsorted(sides, others)
+    before = np.abs(others - sides[np.maximum(after - 1, 0)])
+    apart = np.minimum(before, np.abs(others - sides[np.minimum(after, len(sides) - 1)]))
+    return np.unique(np.concatenate([sides, others[apart >= gap]]))
+
+
+def _both_sides(near: Floats, far: Floats) -> Floats:
+    out = np.concatenate([near, far])
+    return np.concatenate([-out[::-1], out + 1.0]) - 0.5
 
 
 @lru_cache(maxsize=2)
