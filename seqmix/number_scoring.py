@@ -137,11 +137,11 @@ class NumberRun:
             mixture.absorb(rows)
             self._follow(mixture)
 
-    def _follow(self, mixture: NumberMixture) -> tuple[list[Floats], Rows]:
-        """Losses of the baselines on the rows that the mixture absorbed last, and these with their cells."""
+    def _follow(self, mixture: NumberMixture) -> list[Floats]:
+        """Losses of the baselines on the rows that the mixture absorbed last."""
         cells = mixture.latest
         assert cells is not None
-        return [baseline.absorb(cells) + mixture.latest_events for baseline in self._baselines], cells
+        return [baseline.absorb(cells) + mixture.latest_events for baseline in self._baselines]
 
     def score(self, rows: Rows) -> None:
         if not len(rows):
@@ -169,10 +169,8 @@ class NumberRun:
             losses, laws = mixture.tell(rows, self._frozen)
         else:
             losses = mixture.absorb(rows, frozen=self._frozen)
-        base, cells = self._follow(mixture)
-        assert cells.values is not None and cells.cells is not None
-        places = zip(cells.values.tolist(), cells.cells.tolist(), laws, strict=False)
-        for at, (value, width, law) in enumerate(places):
+        base = self._follow(mixture)
+        for at, (value, width, law) in enumerate(zip(*mixture.latest_cells.tolist(), laws, strict=False)):
             if np.isnan(value):
                 continue
             if law is not None:

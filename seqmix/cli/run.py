@@ -11,14 +11,11 @@ import signal
 import sys
 import warnings
 from collections.abc import Callable
-from contextlib import suppress
 from types import FrameType
 from typing import Any
 
 from seqmix.cli.notes import discard, say
 from seqmix.errors import PluginWarning, SeqmixError
-
-_M_MMAP_THRESHOLD = -3  # of malloc.h
 
 
 class Stopped(KeyboardInterrupt):
@@ -29,20 +26,10 @@ class Stopped(KeyboardInterrupt):
         self.number = number
 
 
-def _give_memory_back() -> None:
-    """Let large pieces of memory be mappings of their own, always: where the GNU C library makes that size its own
-    choice, tables that were outgrown leave holes in the heap."""
-    with suppress(ImportError, OSError, AttributeError):
-        from ctypes import CDLL
-
-        CDLL(None).mallopt(_M_MMAP_THRESHOLD, 1 << 20)
-
-
 def main() -> int:
     """Run `seqmix` on the arguments of the process; returns the exit code."""
     # our matrices are small: threads of the linear algebra under numpy only cost, and may add up in another order
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
-    _give_memory_back()
     _on_signals(_stop)
     try:
         try:

@@ -22,7 +22,6 @@ else:
 PI = cython.declare(cython.double, 3.141592653589793)
 LN2 = cython.declare(cython.double, 0.6931471805599453)
 SQRT_HALF = cython.declare(cython.double, 0.7071067811865476)
-LOG_SQRT_2PI = cython.declare(cython.double, 0.9189385332046727)
 EVEN = cython.declare(cython.double, 0.2)  # widths, in scales, up to which density times width will do: even grid
 UNEVEN = cython.declare(cython.double, 0.01)  # and with its second-order term on an uneven one
 UNIFORM = cython.declare(cython.double, -2.0)  # the shape of a law even on [-1, 1]

@@ -19,7 +19,7 @@ from seqmix.models.calendar import phases
 from seqmix.models.errors import ErrorLaw
 from seqmix.models.lags import FADING, choices
 from seqmix.models.laws import Floats, NumberLaw, settled
-from seqmix.models.numbers import LOOKS, STRAY, Cells, Laws, Telling, with_stray
+from seqmix.models.numbers import LOOKS, STRAY, Cells, Laws, Telling, wanted, with_stray
 from seqmix.models.protocol import Context, leading, split
 from seqmix.models.regressions import WIDE, Regressions
 from seqmix.series.rows import Rows
@@ -137,8 +137,7 @@ class Autoregression(Telling):
         dates = places[1:] if self._dates else places
         learned = [side.learn(cells, dates, df) for side in self._sides if len(side.alive)]
         losses = np.concatenate([bits for bits, _, _ in learned], axis=1)
-        every = np.arange(n, dtype=np.int32)
-        mixed, weights = self._settings.mix(losses, every, frozen)
+        mixed, weights = self._settings.mix(losses, np.arange(n, dtype=np.int32), frozen)
         forecasts, scales = (np.concatenate(some, axis=1) for some in list(zip(*learned, strict=True))[1:])
         centres = self._centres(forecasts, weights)
         # within what was seen so far, and some more
@@ -147,13 +146,11 @@ class Autoregression(Telling):
         high = np.fmax.accumulate(np.concatenate([[self.high], seen]))
         centres = np.clip(centres, *self._limits(low[:-1], high[:-1]))
         self.low, self.high = float(low[-1]), float(high[-1])
-        parts = [np.empty((n if laws is not None else 1, law.weights.shape[1])) for law in self._errors]
+        parts = [np.empty((n, law.weights.shape[1])) for law in self._errors] if laws is not None else []
         by_error = [
-            law.learn(centres, cells, places[i], parts[i] if laws is not None else None)
-            for i, law in enumerate(self._errors)
+            law.learn(centres, cells, places[i], parts[i] if parts else None) for i, law in enumerate(self._errors)
         ]
-        by_kind = np.stack([mixed, *by_error], axis=1)
-        bits, kinds = self._kinds.mix(by_kind, every if laws is not None else np.full_like(every, -1), frozen)
+        bits, kinds = self._kinds.mix(np.stack([mixed, *by_error], axis=1), wanted(n, laws), frozen)
         if laws is not None:
             laws += self._laws(forecasts, scales, df, weights, centres, parts, kinds, self._broad.laws(cells.values))
         bits = with_stray(bits, self._broad.absorb(cells.values, cells.widths))

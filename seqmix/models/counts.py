@@ -13,7 +13,7 @@ from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.calendar import phases
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Laws, Looking
+from seqmix.models.numbers import Laws, Looking, wanted
 from seqmix.models.protocol import Context, split
 from seqmix.series.rows import Rows
 
@@ -112,8 +112,7 @@ class Counts(Looking):
         a, b = self._follow(np.arange(self.rows, self.rows + n), rows.times, count, means)
         losses = self._losses(a, b, np.where(there, values, 0.0), widths, base)
         losses[~there | (before != 1.0)] = nan
-        every = np.arange(n, dtype=np.int32)
-        bits, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+        bits, weights = self._weights.mix(losses, wanted(n, laws), frozen)
         if laws is not None:
             for t, heavy in enumerate(weights):
                 laws.append(partial(self._law, heavy, a[t], b[t], broad[t]) if before[t] == 1.0 else None)

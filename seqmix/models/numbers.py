@@ -149,6 +149,11 @@ Laws = list["NumberLaw | Callable[[], NumberLaw] | None"]
 """Laws of rows, or what makes them when they are taken; None where asleep."""
 
 
+def wanted(rows: int, laws: Laws | None) -> npt.NDArray[np.int32]:
+    """For `Weights.mix`: the weights before every row, if laws are told, or before none."""
+    return np.arange(rows, dtype=np.int32) if laws is not None else np.full(rows, -1, dtype=np.int32)
+
+
 class Telling(NumbersModel):
     """A model that learns rows and tells their laws in one go."""
 
@@ -271,8 +276,7 @@ class NumberBank(Telling):
             stop = min(len(rows), done + look - self.rows)
             part = cells[done:stop]
             losses, *standard = self._learn(part)
-            every = np.arange(stop - done, dtype=np.int32)
-            mixed, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+            mixed, weights = self._weights.mix(losses, wanted(stop - done, laws), frozen)
             if laws is not None:
                 laws += self._laws(standard, weights, self._broad.laws(part.values))
             mixed = with_stray(mixed, self._broad.absorb(part.values, part.widths))

@@ -11,7 +11,7 @@ import numpy as np
 from seqmix.keep import Kept
 from seqmix.mixture.weights import Weights
 from seqmix.models.laws import Floats, NumberLaw
-from seqmix.models.numbers import Laws, Looking
+from seqmix.models.numbers import Laws, Looking, wanted
 from seqmix.models.protocol import Context
 from seqmix.models.recurrence import recurrence
 from seqmix.series.rows import Rows
@@ -103,8 +103,8 @@ class Rules(Looking):
         chance, foretold = np.array(sure), np.array(right, dtype=bool)
         inside = np.logaddexp2(np.log2(chance), np.log2(1 - chance) - base[at])
         losses[at, which] = -np.where(foretold, inside, np.log2(1 - chance) - base[at])
-        every = np.arange(len(values), dtype=np.int32)
-        bits, weights = self._weights.mix(losses, every if laws is not None else np.full_like(every, -1), frozen)
+        every = wanted(len(values), laws)
+        bits, weights = self._weights.mix(losses, every, frozen)
         if laws is not None:
             masses = weights[at, which] * chance
             ends = np.searchsorted(at, [every, every + 1])

@@ -166,6 +166,15 @@ class TestAgainstBruteForce:
         assert score.bits_per_row == pytest.approx(np.log2(100) + 0.5 * np.log2(2 * np.pi * np.e), abs=0.15)
 
 
+@pytest.mark.parametrize("size", [1e-120, 1e250])
+def test_measures_are_in_the_unit_of_the_log(size: float) -> None:
+    """The models see numbers so far from 1 times a power of two."""
+    score = seqmix.score((size * np.random.default_rng(3).normal(size=400)).tolist(), last=200, models=["trend"])
+    assert score.coverage == pytest.approx({"0.5": 0.5, "0.8": 0.8, "0.9": 0.9}, abs=0.1)
+    assert score.mae == pytest.approx(size * np.sqrt(2 / np.pi), rel=0.15)
+    assert score.crps == pytest.approx(size / np.sqrt(np.pi), rel=0.15)
+
+
 # ---- baselines ---------------------------------------------------------------------------------------------
 
 
